@@ -1,0 +1,1 @@
+"""Composition and size to a feature matrix: cited tables, elemental descriptors, physics."""

@@ -1,0 +1,1 @@
+"""Train, calibrate, score, limit, rank and report candidates built by ``features``."""
