@@ -28,9 +28,7 @@ __all__ = [
 DEFERRAL = "Follow the safety data sheet, local codes and licensed practice."
 """Words that end every caution cell."""
 
-_NON_METALS = frozenset(
-    re.findall("[A-Z][a-z]?", "HHeBCNOFNeSiPSClArGeAsSeBrKrTeIXe")
-)
+_NON_METALS = frozenset(re.findall("[A-Z][a-z]?", "HHeBCNOFNeSiPSClArGeAsSeBrKrTeIXe"))
 _CLASS_OF_CODE = {
     4: "H300 H310 H330 H340 H350 H360",
     3: "H250 H260 H301 H311 H314 H331 H334 H341 H351 H361 H362 H370 H372 EUH032",
