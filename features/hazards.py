@@ -7,9 +7,10 @@ codes follow the Globally Harmonised System; the tables say which were recalled.
 """
 
 import re
-from collections.abc import Iterable, Mapping
+from collections.abc import Hashable, Iterable, Mapping
 from dataclasses import dataclass
 from functools import cache
+from typing import Any
 
 from features.mass_shares import ORGANIC_CATIONS, checked_composition, mass_percent
 from features.tables import read_table
@@ -134,17 +135,22 @@ def _kinds_that_apply(symbols: frozenset[str]) -> frozenset[str]:
     organic = symbols & ORGANIC_CATIONS.keys()
     elements = symbols - organic
     metals, non_metals = elements - _NON_METALS, elements & _NON_METALS
-    kinds = {"element", "organic", "always"}
+    kinds = {"element", "compound", "organic", "always"}
     if metals and not non_metals and not organic:
         kinds.add("metal")
-    if (metals or len(non_metals) > 1 or organic) and "O" in elements:
-        kinds.add("oxide")
     # oxygen, from a coating say, does not cancel it: a caution too many is the lesser error
     if metals or len(non_metals) > 1:
         kinds.add("anion")
     if metals:
         kinds.add("halide")
     return frozenset(kinds)
+
+
+def _is_started(kind: str, triggers: frozenset[str], symbols: frozenset[str]) -> bool:
+    """Return whether the symbols start a row: any trigger, all of a compound, or always."""
+    if kind == "compound":
+        return triggers <= symbols
+    return kind == "always" or bool(triggers & symbols)
 
 
 def cautions_for(composition: Mapping[str, float]) -> tuple[Caution, ...]:
@@ -173,14 +179,14 @@ def cautions_for(composition: Mapping[str, float]) -> tuple[Caution, ...]:
     Examples
     --------
     >>> [caution.subject for caution in cautions_for({"In": 1, "P": 1})]
-    ['In', 'phosphide', 'nano-powder']
+    ['indium phosphide', 'phosphide', 'In', 'nano-powder']
     """
     symbols = frozenset(checked_composition(composition))
     kinds = _kinds_that_apply(symbols)
     found = [
         (triggers & symbols, caution)
         for kind, triggers, caution in _rows()
-        if kind in kinds and (kind == "always" or triggers & symbols)
+        if kind in kinds and _is_started(kind, triggers, symbols)
     ]
     covered = frozenset().union(*(triggers for triggers, _ in found))
     cautions = [caution for _, caution in found]
@@ -266,6 +272,13 @@ def hazard_class(composition: Mapping[str, float]) -> int:
     return max(caution.hazard_class for caution in cautions_for(composition))
 
 
+@cache
+def _limits() -> tuple[dict[Hashable, Any], ...]:
+    """Return the mass limits, one row each."""
+    rules = read_table("hazard_rules")
+    return tuple(rules[rules["kind"] == "limit"].to_dict("records"))
+
+
 def rohs_mass_fractions(composition: Mapping[str, float]) -> dict[str, RohsShare]:
     """Return the mass shares of the elements that Directive 2011/65/EU limits.
 
@@ -297,7 +310,6 @@ def rohs_mass_fractions(composition: Mapping[str, float]) -> dict[str, RohsShare
     True
     """
     shares = mass_percent(composition)
-    rules = read_table("hazard_rules").query("kind == 'limit'")
     return {
         row["element"]: RohsShare(
             element=row["element"],
@@ -309,7 +321,7 @@ def rohs_mass_fractions(composition: Mapping[str, float]) -> dict[str, RohsShare
             source=row["source"],
             from_memory=bool(row["from_memory"]),
         )
-        for row in rules.to_dict("records")
+        for row in _limits()
     }
 
 

@@ -5,7 +5,10 @@ from the table ``metallicity``. A plasmon does not need a closed gap, and a gap 
 in gold clusters that count as metallic, so the answer is a chance across a band, never an edge.
 """
 
+from collections.abc import Hashable
 from dataclasses import dataclass
+from functools import cache
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -35,7 +38,7 @@ _NUMBERS = (
     "band_high_atoms",
 )
 _BAND_SIGMAS = 1.645
-_FACTOR_KUBO, _FACTOR_SP_GAP = 2.0, 4.0
+_FACTOR_KUBO, _FACTOR_SP_GAP = 3.0, 10.0
 
 
 @dataclass(frozen=True)
@@ -127,19 +130,25 @@ def kubo_electrons(fermi_energy_eV: ArrayLike, *, temperature_K: ArrayLike = 300
     )
 
 
+@cache
+def _table() -> dict[Hashable, Any]:
+    """Return the constants by element."""
+    return read_table("metallicity").set_index("element").to_dict("index")
+
+
 def _row(element: str) -> dict[str, float]:
     """Return the constants of an element."""
-    table = read_table("metallicity").set_index("element")
-    if element not in table.index:
+    table = _table()
+    if element not in table:
         raise UnknownMaterialError(
             explain(
                 "no free-electron constants",
                 where=element,
-                expected=f"one of {', '.join(sorted(table.index))}",
+                expected=f"one of {', '.join(sorted(map(str, table)))}",
                 do="leave the metallic limit out for this material",
             )
         )
-    row = table.to_dict("index")[element]
+    row = table[element]
     return {name: float("nan") if pd.isna(row[name]) else float(row[name]) for name in _NUMBERS}
 
 
@@ -189,9 +198,9 @@ def metallic_band_atoms(element: str, *, temperature_K: float = 300.0) -> tuple[
     Returns
     -------
     low, high : float
-        Published ends, or half and twice the Kubo estimate (a quarter and four times for divalent
-        metals, for which the estimate does not hold). The factors are judgement: observed gold
-        lies at 0.5 to 1.0 times its Kubo estimate.
+        Published ends, or a third and three times the Kubo estimate (a tenth and ten times for
+        divalent metals, for which the estimate does not hold). The factors are judgement: sodium
+        clusters are metallic from tens of atoms (Kubo: 167), magnesium from about 18 (183).
 
     Raises
     ------

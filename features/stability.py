@@ -37,6 +37,7 @@ FEWEST_ATOMS = 200
 """Below this many atoms melting is not monotonic in size and no model here is valid."""
 
 _SHELL_ATOMS = 2.0
+_LEAST_SIGMA_K = 1e-9
 
 
 @dataclass(frozen=True)
@@ -176,7 +177,9 @@ def melting_estimate(
     """Return the melting temperature of particles with the spread of five models.
 
     Pawlow, Gibbs-Thomson, liquid shell of two atom diameters, bond energy and liquid drop, each
-    with the constants of `thermo_constants`; the recommended value is their median.
+    with the constants of `thermo_constants`; the recommended value is their median, chosen before
+    any comparison. It tends to lie high at published points, see
+    `features.stability_scorecard.melting_scorecard`.
 
     Parameters
     ----------
@@ -251,7 +254,7 @@ def survival_chance(temperature_K: ArrayLike, limit_K: ArrayLike, sigma_K: Array
     0.5
     """
     (operating,) = positive(temperature_K=temperature_K)
-    sigma = np.maximum(np.asarray(sigma_K, dtype=np.float64), np.finfo(float).tiny)
+    sigma = np.maximum(np.asarray(sigma_K, dtype=np.float64), _LEAST_SIGMA_K)
     margin = (np.asarray(limit_K, dtype=np.float64) - operating) / sigma
     return np.asarray(norm.cdf(margin), dtype=np.float64)
 

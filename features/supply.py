@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from functools import cache
 from typing import Any
 
-from features.mass_shares import ORGANIC_CATIONS, mass_percent
+from features.mass_shares import ORGANIC_CATIONS, checked_composition, mass_percent
 from features.tables import read_table
 
 __all__ = ["SupplyFigures", "element_supply", "supply_figures", "supply_text"]
@@ -42,7 +42,8 @@ class SupplyFigures:
         Concentration of production by country (0 to 10,000), weighted by mass as in Gaultois et
         al. (2013), and the highest; nan if none is on record.
     without_figures : tuple of str
-        Constituents that the table lacks, left out of every figure.
+        Constituents that the table lacks, left out of every figure; a limit on supply cannot be
+        passed with any. With nothing on record at all the classes are the worst.
     years : str
         Years of the figures, in words.
     """
@@ -105,13 +106,11 @@ def _years(rows: Mapping[str, Mapping[str, Any]]) -> str:
     )
 
 
-def _elemental_shares(composition: Mapping[str, float]) -> dict[str, float]:
-    """Return mass shares of elements, organic cations taken apart."""
-    apart: dict[str, float] = {}
-    for symbol, amount in composition.items():
-        for part, count in ORGANIC_CATIONS.get(symbol, {symbol: 1}).items():
-            apart[part] = apart.get(part, 0.0) + count * amount
-    return mass_percent(apart)
+def _element_shares(composition: Mapping[str, float]) -> dict[str, float]:
+    """Return mass shares of the elements, organic cations left out."""
+    present = checked_composition(composition)
+    elements = {s: amount for s, amount in present.items() if s not in ORGANIC_CATIONS}
+    return mass_percent(elements) if elements else {}
 
 
 def supply_figures(composition: Mapping[str, float]) -> SupplyFigures:
@@ -120,7 +119,8 @@ def supply_figures(composition: Mapping[str, float]) -> SupplyFigures:
     Parameters
     ----------
     composition : mapping of str to float
-        Amount of each element, >= 0; ``FA`` and ``MA`` are organic cations.
+        Amount of each element, >= 0; ``FA`` and ``MA`` are organic cations, made from bulk
+        chemicals and left out of every figure.
 
     Returns
     -------
@@ -137,7 +137,7 @@ def supply_figures(composition: Mapping[str, float]) -> SupplyFigures:
     >>> figures.scarcest_element, figures.worst_price_class
     ('In', 3)
     """
-    shares = _elemental_shares(composition)
+    shares = _element_shares(composition)
     rows = {symbol: row for symbol, row in _table().items() if symbol in shares}
     without = tuple(sorted(shares.keys() - rows.keys()))
     if not rows:
@@ -205,6 +205,6 @@ def supply_text(composition: Mapping[str, float]) -> str:
     )
     return (
         f"supply class {figures.supply_class} of 4; critical: {critical}; scarcest: "
-        f"{figures.scarcest_element or 'unknown'} ({figures.scarcest_crust_ppm:g} ppm of the crust); "
-        f"price class {figures.worst_price_class} of 5{missing} ({figures.years})"
+        f"{figures.scarcest_element or 'unknown'} ({figures.scarcest_crust_ppm:g} ppm of the "
+        f"crust); price class {figures.worst_price_class} of 5{missing} ({figures.years})"
     )

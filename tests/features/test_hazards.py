@@ -78,6 +78,18 @@ def test_gases_that_acid_or_water_releases_are_named_by_their_anion():
     assert "arsine" in caution_text({"In": 1, "As": 1})
 
 
+def test_compound_cautions_need_all_their_elements():
+    assert "indium phosphide" in subjects(In=1, P=1)
+    assert "indium phosphide" not in subjects(Cu=1, In=1, S=2)
+    assert "titanium dioxide" in subjects(Ti=1, O=2)
+    assert "titanium dioxide" not in subjects(Ti=1)
+
+
+def test_chromium_counts_as_hexavalent_only_beside_oxygen():
+    assert hazard_class({"Cr": 1, "O": 3}) == 4
+    assert hazard_class({"Cr": 1}) < 4
+
+
 def test_an_oxide_coating_does_not_cancel_the_phosphide_caution():
     assert "phosphide" in subjects(In=1, P=1, Si=2, O=4)
 
