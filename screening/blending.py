@@ -20,7 +20,7 @@ from screening.calibration import group_weights
 from screening.covariance import CovarianceTerm, FloatArray
 from screening.gaussian import GroupedGaussianProcess
 
-__all__ = ["BlendedRegressor", "LeftOut", "blend_weight", "boosted_trees"]
+__all__ = ["BlendedRegressor", "LeftOut", "blend", "blend_weight", "boosted_trees"]
 
 
 @dataclass(frozen=True)
@@ -45,7 +45,7 @@ class LeftOut:
 
 
 def blend(
-    gaussian: FloatArray, trees: FloatArray, sd: FloatArray, weight: float
+    gaussian: FloatArray, trees: FloatArray, sd: FloatArray, weight: float | FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Return the mixture's mean and standard deviation: own spread plus disagreement."""
     mean = weight * gaussian + (1.0 - weight) * trees
@@ -207,10 +207,15 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
                 trees[test] = model.predict(self._X[np.ix_(test, self._columns)])
         return LeftOut(mean, trees, sd)
 
-    def weigh(self, left: LeftOut, groups: Any, row_weights: Any = None) -> float:
+    @staticmethod
+    def weigh_rows(y: Any, left: LeftOut, groups: Any, row_weights: Any = None) -> float:
         """Return the weight of the Gaussian process by left-out skill, one vote a group."""
         weights = group_weights(groups, row_weights)
-        return blend_weight(self._y, left.gaussian, left.trees, weights)
+        return blend_weight(np.asarray(y, dtype=float), left.gaussian, left.trees, weights)
+
+    def weigh(self, left: LeftOut, groups: Any, row_weights: Any = None) -> float:
+        """Return `weigh_rows` over all training rows."""
+        return self.weigh_rows(self._y, left, groups, row_weights)
 
     def _fit_trees(self, rows: Any) -> HistGradientBoostingRegressor:
         weight = None if self._weight is None else self._weight[rows]

@@ -13,6 +13,7 @@ from scipy.linalg import cho_factor, cho_solve, solve_triangular
 from scipy.optimize import minimize
 from sklearn.base import BaseEstimator, RegressorMixin
 from sklearn.utils.validation import check_is_fitted, validate_data
+from threadpoolctl import threadpool_limits
 
 from screening.covariance import (
     CovarianceTerm,
@@ -25,6 +26,12 @@ from screening.covariance import (
 __all__ = ["GroupedGaussianProcess"]
 
 _JITTER = 1e-10
+_ROWS_PER_THREAD = 600
+
+
+def _threads(n_rows: int) -> int | None:
+    """Return the number of BLAS threads worth their cost; None for all."""
+    return 1 if n_rows < _ROWS_PER_THREAD else None
 
 
 class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
@@ -98,14 +105,16 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
         begin = centre if self.start is None else np.asarray(self.start, dtype=np.float64)
         theta, self.n_iter_ = begin, 1
         if self.max_iter > 0:
-            result = minimize(
-                self._objective,
-                begin,
-                args=(centre, spread),
-                jac=True,
-                method="L-BFGS-B",
-                options={"maxiter": self.max_iter},
-            )
+            # On the table sizes at hand more threads cost more than they bring.
+            with threadpool_limits(_threads(len(y)), user_api="blas"):
+                result = minimize(
+                    self._objective,
+                    begin,
+                    args=(centre, spread),
+                    jac=True,
+                    method="L-BFGS-B",
+                    options={"maxiter": self.max_iter},
+                )
             theta, self.n_iter_ = result.x, max(1, int(result.nit))
         self.theta_ = theta
         self.log_posterior_ = -self._objective(theta, centre, spread)[0]

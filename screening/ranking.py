@@ -1,0 +1,213 @@
+"""The main job: a specification in, a ranked shortlist with its evidence out."""
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from features.errors import NothingQualifiesError, explain
+from features.formula import parse_formula
+from features.hazards import caution_text
+from screening.candidates import candidate_grid, choose_materials
+from screening.dots import ON_RECORD, SizeGapModel
+from screening.scores import Window, describe, score
+from screening.specification import Specification
+
+__all__ = ["COLUMNS", "RankResult", "caution_column", "nearest_records", "rank"]
+
+COLUMNS = (
+    "rank",
+    "material",
+    "structure",
+    "shape",
+    "diameter_nm",
+    "optical_gap_eV",
+    "optical_gap_low_eV",
+    "optical_gap_high_eV",
+    "emission_eV",
+    "emission_nm",
+    "fwhm_meV",
+    "chance_in_window",
+    "fraction_in_window",
+    "size_tolerance_nm",
+    "record_state",
+    "nearest_source",
+    "cautions",
+)
+"""Columns of the shortlist, in order."""
+
+
+@dataclass(frozen=True)
+class RankResult:
+    """What a run found.
+
+    Parameters
+    ----------
+    specification : Specification
+    shortlist : pandas.DataFrame
+        Columns `COLUMNS`, best first.
+    scored : pandas.DataFrame
+        Every candidate with its scores.
+    rejected : pandas.DataFrame
+        Columns material, reason.
+    model : SizeGapModel
+    """
+
+    specification: Specification
+    shortlist: pd.DataFrame
+    scored: pd.DataFrame
+    rejected: pd.DataFrame
+    model: SizeGapModel
+
+    def to_frame(self) -> pd.DataFrame:
+        """Return a copy of the shortlist."""
+        return self.shortlist.copy()
+
+    def chance_of_one(self, n_first: int = 3) -> float:
+        """Return the chance that at least one of the first rows lands, taken as independent."""
+        chances = self.shortlist["chance_in_window"].to_numpy()[:n_first]
+        return float(1.0 - np.prod(1.0 - chances))
+
+    def plot(self, ax: Any = None) -> Any:
+        """Draw gap against size with the window and the shortlist.
+
+        Parameters
+        ----------
+        ax : matplotlib.axes.Axes or None, default None
+
+        Returns
+        -------
+        matplotlib.axes.Axes
+        """
+        from screening.reporting.figures import draw_map  # noqa: PLC0415 - pyplot is slow to load
+
+        return draw_map(self, ax)
+
+    def _repr_html_(self) -> str:
+        return str(self.shortlist.to_html(index=False, escape=True, float_format="%.3f"))
+
+
+def rank(specification: Specification, model: SizeGapModel) -> RankResult:
+    """Rank the candidates of a specification by their calibrated chance.
+
+    Parameters
+    ----------
+    specification : Specification
+    model : SizeGapModel
+        Fitted and calibrated.
+
+    Returns
+    -------
+    RankResult
+
+    Raises
+    ------
+    SpecificationError
+        If a material or family is unknown.
+    NothingQualifiesError
+        If no candidate reaches the least chance.
+    """
+    wanted = specification.candidates
+    materials, refused = choose_materials(wanted, model.rows_["material"])
+    low, high = specification.target.energies_eV
+    window = Window(specification.target.property, low, high)
+    grid = candidate_grid(materials, wanted)
+    described = describe(model, grid, specification.laboratory.size_spread)
+    scored = score(model, described, window)
+    best = _shortlist(scored, specification)
+    missed = _missed(scored, specification)
+    if best.empty:
+        raise NothingQualifiesError(_nothing(scored, specification))
+    best.insert(0, "rank", np.arange(1, len(best) + 1))
+    best["nearest_source"] = nearest_records(best, model)
+    best["cautions"] = caution_column(best["material"])
+    return RankResult(
+        specification,
+        best[list(COLUMNS)].reset_index(drop=True),
+        scored,
+        pd.concat([refused, missed], ignore_index=True),
+        model,
+    )
+
+
+def _ordered(scored: pd.DataFrame) -> pd.DataFrame:
+    """Sort by chance, then by tolerance, then by name and size, so that ties fall the same way."""
+    keyed = scored.assign(
+        _chance=scored["chance_in_window"].round(9), _room=scored["size_tolerance_nm"].round(9)
+    )
+    order = ["_chance", "_room", "material", "diameter_nm"]
+    ordered = keyed.sort_values(order, ascending=[False, False, True, True], kind="stable")
+    return ordered.drop(columns=["_chance", "_room"])
+
+
+def _shortlist(scored: pd.DataFrame, specification: Specification) -> pd.DataFrame:
+    """Take the best diameters of each material, apart by the stated spacing."""
+    cut = specification.shortlist
+    ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)])
+    taken: dict[str, list[float]] = {}
+    rows = []
+    for index, material, diameter in ordered[["material", "diameter_nm"]].itertuples(name=None):
+        sizes = taken.setdefault(material, [])
+        apart = all(abs(diameter - size) >= cut.spacing_nm for size in sizes)
+        if apart and len(sizes) < cut.per_material:
+            sizes.append(diameter)
+            rows.append(index)
+        if len(rows) == cut.length:
+            break
+    return ordered.loc[rows].copy()
+
+
+def _missed(scored: pd.DataFrame, specification: Specification) -> pd.DataFrame:
+    """List materials whose best chance stays below the least."""
+    least = specification.shortlist.least_chance
+    best = scored.groupby("material", sort=True)["chance_in_window"].max()
+    short = best[best < max(least, 1e-12)]
+    reasons = [f"best chance {value:.2g} is below {least:g}" for value in short]
+    return pd.DataFrame({"material": short.index, "reason": reasons})
+
+
+def _nothing(scored: pd.DataFrame, specification: Specification) -> str:
+    best = scored.loc[scored["chance_in_window"].idxmax()]
+    return explain(
+        "no candidate qualifies",
+        where="shortlist.least_chance",
+        expected=f"a chance of at least {specification.shortlist.least_chance:g}",
+        found=f"at best {best['chance_in_window']:.3g} ({best['material']}, "
+        f"{best['diameter_nm']:g} nm)",
+        do="widen the window, allow more materials or lower least_chance",
+    )
+
+
+def nearest_records(frame: pd.DataFrame, model: SizeGapModel) -> list[str]:
+    """Name the record nearest to each candidate, of its own material where there is one.
+
+    Parameters
+    ----------
+    frame : pandas.DataFrame
+        Candidates with bulk constants and record_state.
+    model : SizeGapModel
+
+    Returns
+    -------
+    list of str
+        ``material diameter: source key``.
+    """
+    rows = model.rows_
+    trained, wanted = model.coordinates(rows), model.coordinates(frame)
+    names = []
+    for position, (material, state) in enumerate(
+        zip(frame["material"], frame["record_state"], strict=True)
+    ):
+        distance = np.linalg.norm(trained - wanted[position], axis=1)
+        if state == ON_RECORD:
+            distance = np.where(rows["material"].eq(material), distance, np.inf)
+        nearest = rows.iloc[int(np.argmin(distance))]
+        names.append(f"{nearest['material']} {nearest['diameter_nm']:.1f} nm: {nearest['source']}")
+    return names
+
+
+def caution_column(materials: pd.Series) -> list[str]:
+    """Return the caution of each material in one cell."""
+    texts = {m: caution_text(dict(parse_formula(m).amounts)) for m in materials.unique()}
+    return [texts[material] for material in materials]

@@ -1,0 +1,246 @@
+"""Typed, checked specifications of a run, read from TOML.
+
+Targets may be given in nm or eV; inside, energies are in eV and lengths in nm.
+"""
+
+import tomllib
+from collections.abc import Mapping
+from difflib import get_close_matches
+from pathlib import Path
+from typing import Annotated, Any, Literal, Self
+
+from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_validator
+
+from features.emission import HC_eV_nm
+from features.errors import SpecificationError, explain
+from features.size_gap import LARGEST_DIAMETER_nm, SMALLEST_DIAMETER_nm
+
+__all__ = [
+    "Candidates",
+    "Laboratory",
+    "Shortlist",
+    "Specification",
+    "Target",
+    "load_specification",
+    "parse_specification",
+]
+
+_LARGEST_FILE_BYTES = 1_000_000
+_MOST_DIAMETERS = 20_000
+
+Element = Annotated[str, Field(pattern=r"^[A-Z][a-z]?$")]
+Pair = Annotated[list[float], Field(min_length=2, max_length=2)]
+
+
+class _Part(BaseModel):
+    model_config = ConfigDict(
+        extra="forbid", frozen=True, allow_inf_nan=False, str_strip_whitespace=True, strict=False
+    )
+
+
+class Target(_Part):
+    """What the samples must hit.
+
+    Exactly one of ``window_nm`` and ``window_eV``; both ends belong to the window.
+    """
+
+    property: Literal["emission", "optical_gap"] = Field(
+        default="emission", description="emission of the batch, or its optical gap"
+    )
+    window_nm: Pair | None = Field(default=None, description="wavelengths, nm, 150 to 20000")
+    window_eV: Pair | None = Field(default=None, description="energies, eV, 0.05 to 8")
+
+    @model_validator(mode="after")
+    def _one_window(self) -> Self:
+        if (self.window_nm is None) == (self.window_eV is None):
+            raise ValueError("expected exactly one of window_nm and window_eV")
+        window = self.window_nm or self.window_eV or []
+        if not window[0] < window[1]:
+            raise ValueError(f"the window is upside down: expected low < high, found {window}")
+        if self.window_nm and not 150.0 <= window[0] < window[1] <= 20_000.0:
+            raise ValueError(
+                f"window_nm out of range: expected 150 to 20000 nm, found {window}"
+                + ("; are these eV? then write window_eV" if window[1] < 20.0 else "")
+            )
+        if self.window_eV and not 0.05 <= window[0] < window[1] <= 8.0:
+            raise ValueError(
+                f"window_eV out of range: expected 0.05 to 8 eV, found {window}"
+                + ("; are these nm? then write window_nm" if window[1] > 100.0 else "")
+            )
+        return self
+
+    @property
+    def energies_eV(self) -> tuple[float, float]:
+        """Window as energies, eV, low before high."""
+        if self.window_eV is not None:
+            return self.window_eV[0], self.window_eV[1]
+        low, high = self.window_nm or (1.0, 1.0)
+        return HC_eV_nm / high, HC_eV_nm / low
+
+
+class Candidates(_Part):
+    """Which materials and diameters may be made."""
+
+    materials: list[str] = Field(
+        default_factory=list, max_length=10_000, description="formulas; empty for all in the tables"
+    )
+    families: list[str] = Field(default_factory=list, description="families; empty for all")
+    exclude_elements: list[Element] = Field(default_factory=list, description="element symbols")
+    diameter_nm: Pair = Field(
+        default=[SMALLEST_DIAMETER_nm, 12.0], description="smallest and largest core diameter, nm"
+    )
+    step_nm: float = Field(default=0.05, ge=0.001, le=5.0, description="diameter step, nm")
+    unmeasured: bool = Field(
+        default=True, description="also materials without size data (state: new)"
+    )
+
+    @model_validator(mode="after")
+    def _sizes(self) -> Self:
+        low, high = self.diameter_nm
+        if not SMALLEST_DIAMETER_nm <= low <= high <= LARGEST_DIAMETER_nm:
+            raise ValueError(
+                f"diameter_nm out of range: expected {SMALLEST_DIAMETER_nm} <= low <= high <= "
+                f"{LARGEST_DIAMETER_nm} nm, where the model holds, found {self.diameter_nm}"
+            )
+        if (high - low) / self.step_nm > _MOST_DIAMETERS:
+            raise ValueError(f"step_nm is too fine: expected at most {_MOST_DIAMETERS} diameters")
+        return self
+
+
+class Laboratory(_Part):
+    """What the laboratory can hold."""
+
+    size_spread: float = Field(
+        default=0.07, gt=0.0, le=0.5, description="standard deviation of the diameter over its mean"
+    )
+
+
+class Shortlist(_Part):
+    """How the answer is cut."""
+
+    length: int = Field(default=10, ge=1, le=1000, description="most rows")
+    per_material: int = Field(default=1, ge=1, le=100, description="most diameters of a material")
+    least_chance: float = Field(
+        default=0.01, ge=0.0, lt=1.0, description="least chance in the window to be listed"
+    )
+    spacing_nm: float = Field(
+        default=0.3, ge=0.0, le=10.0, description="least distance of two diameters of a material"
+    )
+
+
+class Specification(_Part):
+    """One run."""
+
+    title: str = Field(default="Untitled", min_length=1, max_length=200, description="heading")
+    target: Target
+    candidates: Candidates = Candidates()
+    laboratory: Laboratory = Laboratory()
+    shortlist: Shortlist = Shortlist()
+    seed: int = Field(default=0, ge=0, le=2**31 - 1, description="seed of the trees")
+
+
+def _known_keys(location: tuple[Any, ...]) -> list[str]:
+    """Return the keys that the table at a location knows."""
+    fields: Mapping[str, Any] = Specification.model_fields
+    for step in location[:-1]:
+        annotation = fields[step].annotation if step in fields else None
+        if not (isinstance(annotation, type) and issubclass(annotation, BaseModel)):
+            return []
+        fields = annotation.model_fields
+    return list(fields)
+
+
+def _message(error: Any, where: str) -> str:
+    """Turn one validation error into what, where, expected, found, what to do."""
+    location = tuple(error["loc"])
+    path = ".".join(str(step) for step in location) or "top level"
+    place = f"{where}, {path}" if where else path
+    if error["type"] == "extra_forbidden":
+        known = _known_keys(location)
+        near = get_close_matches(str(location[-1]), known, n=1, cutoff=0.4)
+        return explain(
+            f"unknown key {location[-1]!r}",
+            where=place,
+            expected=f"one of {', '.join(known)}",
+            do=f"did you mean {near[0]}?" if near else "",
+        )
+    if error["type"] == "missing":
+        return explain(f"missing key {location[-1]!r}", where=place, do="add it")
+    if error["type"] == "value_error":
+        return explain(str(error["ctx"]["error"]), where=place)
+    found = repr(error.get("input"))
+    return explain(
+        "wrong value", where=place, expected=error["msg"], found=found[:80]
+    )
+
+
+def parse_specification(data: Mapping[str, Any], where: str = "") -> Specification:
+    """Check a parsed specification.
+
+    Parameters
+    ----------
+    data : mapping
+        Tables and keys as in TOML.
+    where : str, default ""
+        File name for messages.
+
+    Returns
+    -------
+    Specification
+
+    Raises
+    ------
+    SpecificationError
+        With all faults at once, one a line.
+
+    Examples
+    --------
+    >>> specification = parse_specification({"target": {"window_nm": [625, 635]}})
+    >>> [round(energy, 3) for energy in specification.target.energies_eV]
+    [1.953, 1.984]
+    """
+    try:
+        return Specification.model_validate(data)
+    except ValidationError as error:
+        messages = [_message(fault, where) for fault in error.errors()]
+        raise SpecificationError("\n".join(messages)) from None
+
+
+def load_specification(path: Path) -> Specification:
+    """Read and check a specification file.
+
+    Parameters
+    ----------
+    path : pathlib.Path
+        A TOML file, at most 1 MB.
+
+    Returns
+    -------
+    Specification
+
+    Raises
+    ------
+    SpecificationError
+        If the file cannot be read, is not TOML, or cannot be run as written.
+    """
+    try:
+        if path.stat().st_size > _LARGEST_FILE_BYTES:
+            raise SpecificationError(
+                explain("specification too large", where=str(path), expected="at most 1 MB")
+            )
+        text = path.read_text(encoding="utf-8")
+    except OSError as error:
+        raise SpecificationError(
+            explain("cannot read the specification", where=str(path), found=error.strerror or "")
+        ) from None
+    except UnicodeDecodeError:
+        raise SpecificationError(
+            explain("the specification is not UTF-8 text", where=str(path))
+        ) from None
+    try:
+        data = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise SpecificationError(
+            explain("not a TOML file", where=str(path), found=str(error))
+        ) from None
+    return parse_specification(data, path.name)
