@@ -17,8 +17,11 @@ __all__ = ["ChargeBalance", "charge_balance", "require_semiconductor"]
 
 _TOLERANCE = 0.02
 _MAX_INVERSION = 0.35
+_HALOGENS = frozenset({"Cl", "Br", "I"})
 _MAX_ASSIGNMENTS = 50_000
-_NON_METALS = frozenset("H B C N O F Si P S Cl Ge As Se Br Sb Te I At".split())
+_NON_METALS = frozenset(
+    {"H", "B", "C", "N", "O", "F", "Si", "P", "S", "Cl", "Ge", "As", "Se", "Br", "Sb", "Te", "I"}
+)
 
 
 @dataclass(frozen=True)
@@ -52,7 +55,9 @@ def _inversion(states: tuple[int, ...], symbols: tuple[str, ...]) -> float:
     chi = _electronegativities()
     anions = [chi[s] for s, q in zip(symbols, states, strict=True) if q < 0]
     cations = [chi[s] for s, q in zip(symbols, states, strict=True) if q > 0]
-    return max(max(cations, default=0.0) - min(anions, default=9.0), 0.0)
+    inverted = max(max(cations, default=0.0) - min(anions, default=9.0), 0.0)
+    halogen_cation = any(q > 0 and s in _HALOGENS for s, q in zip(symbols, states, strict=True))
+    return inverted + (1.0 if inverted and halogen_cation else 0.0)
 
 
 def _strain(states: tuple[int, ...], symbols: tuple[str, ...], usual: dict[str, int]) -> float:
@@ -76,7 +81,7 @@ def _column(symbol: str) -> int:
     """Return the group of an element; oxygen and fluorine stand alone, they only make anions."""
     if symbol in {"O", "F", *ORGANIC_SYMBOLS}:
         return -1 if symbol in {"O", "F"} else 1
-    return int(element_table().at[symbol, "group"])
+    return int(element_table()["group"].to_dict()[symbol])
 
 
 def _neutralised(

@@ -48,7 +48,7 @@ def ion_shares(compound: Compound) -> tuple[dict[str, float], dict[str, float]]:
     states = charge_balance(compound).states
     anions = {s: x for s, x in fractions.items() if states.get(s, 0.0) < 0}
     if not anions or len(anions) == len(fractions):
-        anions = {s: x for s, x in list(fractions.items())[-1:]}
+        anions = dict(list(fractions.items())[-1:])
     cations = {s: x for s, x in fractions.items() if s not in anions} or anions
     return _shares(cations), _shares(anions)
 
@@ -112,8 +112,9 @@ def composition_descriptors(formulas: Sequence[str]) -> pd.DataFrame:
     >>> bool((frame.iloc[0] == frame.iloc[1]).all())
     True
     """
+    names = _names()
     rows = [_row(formula) for formula in formulas]
-    return pd.DataFrame(np.array(rows).reshape(len(rows), -1), columns=_names())
+    return pd.DataFrame(np.array(rows).reshape(len(rows), len(names)), columns=names)
 
 
 def _one_column(X: Any) -> tuple[list[str], Any]:

@@ -162,7 +162,7 @@ def _filled_table() -> pd.DataFrame:
     table = raw.apply(_fill, scale=raw["mendeleev_number"])
     for symbol, (radius_nm, atoms) in _ORGANIC.items():
         row = table.loc["Cs"].copy()
-        row["mass_u"] = sum(n * table.at[part, "mass_u"] for part, n in atoms.items())
+        row["mass_u"] = sum(n * table["mass_u"][part] for part, n in atoms.items())
         row["ionic_radius_nm"] = radius_nm
         table.loc[symbol] = row
     return table
@@ -186,7 +186,7 @@ def element_table() -> pd.DataFrame:
     >>> float(element_table().loc["Se", "electronegativity"])
     2.55
     """
-    return _filled_table().copy()
+    return _filled_table().copy(deep=True)
 
 
 def filled_descriptors() -> dict[str, list[str]]:
@@ -263,7 +263,7 @@ def shannon_radius_nm(symbol: str, state: int) -> float:
     by_state = Element(symbol).data.get("Shannon radii") or {}
     same_sign = [s for s in by_state if int(s) * state > 0]
     if not same_sign:
-        return float(_filled_table().at[symbol, "ionic_radius_nm"])
+        return float(_filled_table()["ionic_radius_nm"][symbol])
     shells = by_state[min(same_sign, key=lambda s: abs(int(s) - state))]
     order = ("VI", "IV", "VIII", "VII", "V", *shells)
     spins = shells[next(name for name in order if name in shells)]
