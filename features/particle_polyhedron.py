@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from features.particle_lattice import CrystalLattice, IntArray
 
-__all__ = ["ExplicitParticle", "SiteClass", "cut_particle"]
+__all__ = ["ExplicitParticle", "SiteClass", "count_atoms", "cut_particle"]
 
 FloatArray = NDArray[np.float64]
 
@@ -137,17 +137,48 @@ def _classify(
     return classes, index.reshape(-1)
 
 
-def cut_particle(lattice: CrystalLattice, offsets: Mapping[str, int]) -> ExplicitParticle:
+def _inside(lattice: CrystalLattice, layers: Mapping[str, int]) -> tuple[IntArray, IntArray]:
+    """Return the sites inside of all facets, and the basis index of each."""
+    normals, planes, _ = _planes(lattice, layers)
+    sites, kind = _candidates(lattice, _half_width(normals, planes), _shift(lattice, layers))
+    # floating point holds these whole numbers exactly and multiplies them many times faster
+    heights = sites.astype(np.float64) @ normals.T.astype(np.float64)
+    kept = np.all(heights <= planes, axis=1)
+    return sites[kept], kind[kept]
+
+
+def count_atoms(lattice: CrystalLattice, layers: Mapping[str, int]) -> int:
+    """Count the atoms that `cut_particle` would keep, without classing them.
+
+    Parameters
+    ----------
+    lattice, layers
+        As for `cut_particle`.
+
+    Returns
+    -------
+    int
+
+    Examples
+    --------
+    >>> from features.particle_lattice import crystal_lattice
+    >>> count_atoms(crystal_lattice("bcc"), {"(110)": 1})
+    15
+    """
+    return len(_inside(lattice, layers)[0])
+
+
+def cut_particle(lattice: CrystalLattice, layers: Mapping[str, int]) -> ExplicitParticle:
     """Cut a particle out of a lattice.
 
     Parameters
     ----------
     lattice : CrystalLattice
-    offsets : mapping of str to int
-        For fcc and bcc, the value of a family's normals times the coordinates (half lattice
-        constants) of its outermost layer; for hcp, that many whole periods beyond the first
-        favourable termination. An fcc particle is centred on an atom or on the octahedral hole,
-        whichever makes its corners atoms.
+    layers : mapping of str to int
+        For fcc, the value of a family's normals times the coordinates (half lattice constants) of
+        its outermost layer; the particle is centred on an atom or on the octahedral hole,
+        whichever makes its corners atoms. For bcc and hcp, centred on an atom, that many whole
+        periods of a family beyond its first favourable termination.
 
     Returns
     -------
@@ -160,17 +191,15 @@ def cut_particle(lattice: CrystalLattice, offsets: Mapping[str, int]) -> Explici
     >>> shell.n_atoms, shell.n_surface
     (13, 12)
     """
-    normals, planes, family_of = _planes(lattice, offsets)
-    sites, kind = _candidates(lattice, _half_width(normals, planes), _shift(lattice, offsets))
-    kept = np.all(sites @ normals.T <= planes, axis=1)
-    sites, kind = sites[kept], kind[kept]
+    normals, planes, family_of = _planes(lattice, layers)
+    sites, kind = _inside(lattice, layers)
     table = _neighbour_table(lattice, sites, kind)
     coordination = np.count_nonzero(table < len(sites), axis=1).astype(np.int64)
     generalised = np.append(coordination, 0)[table].sum(axis=1) / lattice.bulk_coordination
     surface = np.flatnonzero(coordination < lattice.bulk_coordination)
     reach = (lattice.neighbours @ normals.T).max(axis=1)
     touching = planes - sites[surface] @ normals.T < reach[kind[surface]]
-    classes, index = _classify(touching, family_of, tuple(offsets), coordination[surface])
+    classes, index = _classify(touching, family_of, tuple(layers), coordination[surface])
     class_index = np.full(len(sites), -1, dtype=np.int64)
     class_index[surface] = index
     positions = sites @ lattice.cartesian
@@ -180,21 +209,20 @@ def cut_particle(lattice: CrystalLattice, offsets: Mapping[str, int]) -> Explici
 
 
 def _planes(
-    lattice: CrystalLattice, offsets: Mapping[str, int]
+    lattice: CrystalLattice, layers: Mapping[str, int]
 ) -> tuple[IntArray, IntArray, IntArray]:
     """Return normals, plane offsets and family numbers of all facets."""
-    families = [lattice.facets[name] for name in offsets]
-    is_hexagonal = lattice.structure == "hcp"
+    families = [lattice.facets[name] for name in layers]
     planes = [
-        f.terminations + f.period * n if is_hexagonal else np.full(len(f.normals), n)
-        for f, n in zip(families, offsets.values(), strict=True)
+        np.full(len(f.normals), n) if lattice.structure == "fcc" else f.terminations + f.period * n
+        for f, n in zip(families, layers.values(), strict=True)
     ]
     family_of = np.repeat(np.arange(len(families)), [len(f.normals) for f in families])
     return np.concatenate([f.normals for f in families]), np.concatenate(planes), family_of
 
 
-def _shift(lattice: CrystalLattice, offsets: Mapping[str, int]) -> IntArray:
+def _shift(lattice: CrystalLattice, layers: Mapping[str, int]) -> IntArray:
     """Return the origin's shift that makes an fcc polyhedron's corners atoms."""
-    corner = offsets.get("(111)", offsets.get("(100)", 0))
+    corner = layers.get("(111)", layers.get("(100)", 0))
     is_odd = lattice.structure == "fcc" and corner % 2 == 1
     return np.array([int(is_odd), 0, 0], dtype=np.int64)

@@ -109,7 +109,7 @@ def _decahedron_ring(ring: int, last: int, height: int) -> tuple[FloatArray, Int
     if ring == last:
         kind = np.where(is_end, np.where(twin, 0, 2), np.where(twin, 3, 5))
     else:
-        kind = np.where(is_end, np.where(twin, 0 if ring == 0 else 1, 4), -1)
+        kind = np.where(is_end, np.where(twin, 6 if ring == 0 else 1, 4), -1)
     return positions, kind.astype(np.int64)
 
 
@@ -139,5 +139,6 @@ def decahedron_particle(n_rings: int) -> ExplicitParticle:
         ("edge", "(100)/(100)"),
         ("terrace", "(111)"),
         ("terrace", "(100)"),
+        ("vertex", "(111)"),
     )
     return _label(np.concatenate([p for p, _ in rings]), np.concatenate([k for _, k in rings]), names)
