@@ -8,7 +8,7 @@ arXiv 2306.06342). The score is the residual over the model's own standard devia
 intervals widen where the model knows less.
 """
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any, Self
 
 import numpy as np
@@ -118,6 +118,15 @@ class GroupCalibration:
         }
         self._nodes()
         return self
+
+    @classmethod
+    def from_factors(cls, factors: Mapping[float, float], n_groups: int, state: str = "") -> Self:
+        """Rebuild a calibration from the half widths that an earlier fit learned."""
+        calibration = cls(tuple(sorted(factors)), state)
+        calibration.n_groups_, calibration.refused_ = n_groups, ()
+        calibration.factors_ = dict(factors)
+        calibration._nodes()  # noqa: SLF001 - its own class
+        return calibration
 
     def _nodes(self) -> None:
         """Lay the map from the model's score to a standard normal score."""

@@ -111,7 +111,7 @@ def rank(specification: Specification, model: SizeGapModel) -> RankResult:
     wanted = specification.candidates
     materials, refused = choose_materials(wanted, model.rows_["material"])
     low, high = specification.target.energies_eV
-    window = Window(specification.target.property, low, high)
+    window = Window(specification.target.quantity, low, high)
     grid = candidate_grid(materials, wanted)
     described = describe(model, grid, specification.laboratory.size_spread)
     scored = score(model, described, window)

@@ -24,9 +24,9 @@ _LEVEL = 0.9
 
 @dataclass(frozen=True)
 class Window:
-    """Target window: property, and ends in eV."""
+    """Target window: quantity, and ends in eV."""
 
-    property: str
+    quantity: str
     low_eV: float
     high_eV: float
 
@@ -92,7 +92,7 @@ def score(model: SizeGapModel, described: pd.DataFrame, window: Window) -> pd.Da
         A copy with three columns more.
     """
     frame = described.copy()
-    emits = window.property == "emission"
+    emits = window.quantity == "emission"
     centre = frame["emission_eV" if emits else "optical_gap_eV"].to_numpy()
     stokes_sd = frame["stokes_sd_eV"].to_numpy() if emits else np.zeros(len(frame))
     sd = np.hypot(frame["model_sd_eV"].to_numpy(), stokes_sd)

@@ -44,7 +44,7 @@ class Target(_Part):
     Exactly one of ``window_nm`` and ``window_eV``; both ends belong to the window.
     """
 
-    property: Literal["emission", "optical_gap"] = Field(
+    quantity: Literal["emission", "optical_gap"] = Field(
         default="emission", description="emission of the batch, or its optical gap"
     )
     window_nm: Pair | None = Field(default=None, description="wavelengths, nm, 150 to 20000")

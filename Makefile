@@ -1,0 +1,31 @@
+# Two commands do everything: `make demo` and `make test`. Each makes its own .venv when there is none.
+PYTHON ?= python3
+VENV := .venv
+BIN := $(VENV)/bin
+OUT ?= demo-run
+
+.PHONY: demo test clean evidence
+
+$(BIN)/fewnm: pyproject.toml requirements.lock
+	$(PYTHON) -c "import sys; sys.exit('fewnm needs Python 3.11 or newer') if sys.version_info < (3, 11) else None"
+	test -x $(BIN)/python || $(PYTHON) -m venv $(VENV)
+	$(BIN)/python -m pip install --quiet --disable-pip-version-check --constraint requirements.lock --editable '.[test]'
+	touch $@
+
+demo: $(BIN)/fewnm
+	$(BIN)/fewnm rank red-emitter --out $(OUT) --overwrite
+
+test: $(BIN)/fewnm
+	$(BIN)/ruff check .
+	$(BIN)/ruff format --check .
+	$(BIN)/mypy
+	$(BIN)/lint-imports
+	$(BIN)/python -m pytest -n 2 --dist loadfile
+
+# The figures that the report and the README print; takes some minutes.
+evidence: $(BIN)/fewnm
+	$(BIN)/fewnm audit --out build/audit --overwrite
+	cp build/audit/held_out_figures.csv datasets/held_out_figures.csv
+
+clean:
+	rm -rf $(VENV) build dist $(OUT)

@@ -1,0 +1,258 @@
+"""The command line: thin, quick to answer, heavy libraries loaded inside the commands.
+
+Exit codes: 0 done; 1 a bug; 2 usage; 3 bad input data; 4 bad specification; 5 ran, but nothing
+qualifies or a gate failed; 130 interrupted.
+"""
+
+import sys
+from collections.abc import Callable
+from functools import wraps
+from pathlib import Path
+from typing import Annotated, Any, Literal
+
+import typer
+
+from features.errors import (
+    FewnmError,
+    NothingQualifiesError,
+    OutputError,
+    SpecificationError,
+)
+
+__all__ = ["app", "main"]
+
+_EPILOG = (
+    "Exit codes: 0 done; 1 a bug; 2 usage; 3 bad input data; 4 bad specification; "
+    "5 ran, but nothing qualifies or a gate failed; 130 interrupted."
+)
+
+app = typer.Typer(
+    name="fewnm",
+    no_args_is_help=True,
+    add_completion=True,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+    epilog=_EPILOG,
+    context_settings={"help_option_names": ["-h", "--help"]},
+    help=(
+        "Which few (composition, size) nanoparticle samples to make, and how sure that is.\n\n"
+        "Examples:\n\n"
+        "  fewnm rank red-emitter --out red-run\n\n"
+        "  fewnm predict CdSe 3.0"
+    ),
+)
+
+
+def _exit_code(error: FewnmError) -> int:
+    if isinstance(error, SpecificationError):
+        return 4
+    if isinstance(error, NothingQualifiesError):
+        return 5
+    return 2 if isinstance(error, OutputError) else 3
+
+
+def _guarded(command: Callable[..., None]) -> Callable[..., None]:
+    """Turn errors that a user can mend into one message and the documented exit code."""
+
+    @wraps(command)
+    def run(*args: Any, **kwargs: Any) -> None:
+        try:
+            command(*args, **kwargs)
+        except FewnmError as error:
+            typer.echo(f"fewnm: {error}", err=True)
+            raise typer.Exit(_exit_code(error)) from None
+        except KeyboardInterrupt:
+            typer.echo("fewnm: interrupted; files already written are whole", err=True)
+            raise typer.Exit(130) from None
+        except OSError as error:
+            typer.echo(f"fewnm: cannot write: {error.strerror}: {error.filename}", err=True)
+            raise typer.Exit(2) from None
+
+    return run
+
+
+def _say(text: str) -> None:
+    """Talk on standard error, so that standard output holds data only."""
+    typer.echo(text, err=True)
+
+
+class _Stage:
+    """A spinner on a terminal, one plain line elsewhere."""
+
+    def __init__(self, text: str) -> None:
+        self._text = text
+        self._status: Any = None
+
+    def __enter__(self) -> None:
+        if not sys.stderr.isatty():
+            _say(self._text)
+            return
+        from rich.console import Console
+
+        self._status = Console(stderr=True).status(self._text)
+        self._status.__enter__()
+
+    def __exit__(self, *details: object) -> None:
+        if self._status is not None:
+            self._status.__exit__(*details)
+
+
+def _specification_path(name: str) -> Path:
+    """Return the file of that name, or the packaged specification."""
+    path = Path(name)
+    if path.suffix == ".toml" or path.exists():
+        return path
+    from features.tables import packaged_path
+
+    known = sorted(p.stem for p in packaged_path("configs").glob("*.toml"))
+    if name not in known:
+        from features.errors import explain
+
+        raise SpecificationError(
+            explain(
+                f"no specification {name!r}",
+                expected=f"a .toml file or one of {', '.join(known)}",
+                do="`fewnm start` writes one to begin with",
+            )
+        )
+    return packaged_path("configs", f"{name}.toml")
+
+
+@app.command(epilog=_EPILOG)
+@_guarded
+def rank(
+    spec: Annotated[str, typer.Argument(help="Specification: a .toml file or a packaged name.")],
+    out: Annotated[Path, typer.Option(help="Folder for the results; made if missing.")],
+    overwrite: Annotated[bool, typer.Option(help="Replace an earlier run in the folder.")] = False,
+) -> None:
+    """Rank candidates and write the shortlist, the report and the manifest.
+
+    Example: fewnm rank red-emitter --out red-run
+    """
+    from screening.specification import load_specification
+
+    specification = load_specification(_specification_path(spec))
+    from screening.outputs import prepare_folder
+    from screening.running import run_rank
+
+    existed = out.exists()
+    if existed:
+        prepare_folder(out, overwrite=overwrite)
+    with _Stage(f"Ranking: {specification.title}"):
+        run = run_rank(specification, out, overwrite=overwrite)
+    _say(_shortlist_text(run.result))
+    _say(f"Report: {run.folder / 'report.html'}")
+
+
+def _shortlist_text(result: Any) -> str:
+    """Return the shortlist as a plain table."""
+    columns = ["rank", "material", "diameter_nm", "emission_nm", "fwhm_meV", "chance_in_window"]
+    columns += ["fraction_in_window", "size_tolerance_nm", "record_state"]
+    table = result.shortlist[columns].round(
+        {"diameter_nm": 2, "emission_nm": 0, "fwhm_meV": 0, "chance_in_window": 2,
+         "fraction_in_window": 2, "size_tolerance_nm": 2}
+    )
+    return str(table.to_string(index=False))
+
+
+@app.command(epilog=_EPILOG)
+@_guarded
+def predict(
+    material: Annotated[str | None, typer.Argument(help="Formula, for instance CdSe.")] = None,
+    diameter_nm: Annotated[float | None, typer.Argument(help="Core diameter, nm, > 0.")] = None,
+    table: Annotated[Path | None, typer.Option(help="CSV of many questions, see below.")] = None,
+    output_format: Annotated[
+        Literal["text", "json", "csv"], typer.Option("--format", help="Form of the answer.")
+    ] = "text",
+    size_spread: Annotated[
+        float, typer.Option(min=0.001, max=0.5, help="Spread of diameters over their mean.")
+    ] = 0.07,
+) -> None:
+    """Answer one pair, or a table of them, in the order given.
+
+    A table asks by its columns: material, diameter_nm (optional structure, shape) for quantum
+    dots; material alone for the bulk gap; material, adsorbate (optional structure, facet) for
+    adsorption energies.
+
+    Example: fewnm predict CdSe 3.0 --format json
+    """
+    from screening import answering
+
+    if table is not None:
+        if material is not None:
+            raise typer.BadParameter("give either a material or --table, not both")
+        answer = answering.answer_table(table, size_spread)
+    elif material is None:
+        raise typer.BadParameter("give a material and a diameter, or --table FILE")
+    else:
+        if diameter_nm is not None and not 0.0 < diameter_nm <= answering.LARGEST_nm:
+            raise typer.BadParameter(
+                f"diameter_nm: expected > 0 and at most {answering.LARGEST_nm:g} nm, "
+                f"found {diameter_nm:g}"
+            )
+        answer = answering.answer_one(material, diameter_nm, size_spread)
+    typer.echo(answering.render(answer, output_format), nl=False)
+
+
+@app.command(epilog=_EPILOG)
+@_guarded
+def audit(
+    out: Annotated[Path, typer.Option(help="Folder for predictions and figures.")],
+    jobs: Annotated[int, typer.Option(min=1, max=256, help="Worker processes.")] = 2,
+    overwrite: Annotated[bool, typer.Option(help="Replace an earlier audit.")] = False,
+) -> None:
+    """Measure errors, coverage and baselines on materials and sizes that were left out.
+
+    Takes one to three minutes on two cores. Example: fewnm audit --out audit
+    """
+    from screening.auditing import audit_text, run_audit
+
+    with _Stage("Leaving out every material in turn"):
+        figures = run_audit(out, n_jobs=jobs, overwrite=overwrite)
+    typer.echo(audit_text(figures))
+
+
+@app.command(epilog=_EPILOG)
+@_guarded
+def data(
+    name: Annotated[str | None, typer.Argument(help="Table to print as CSV.")] = None,
+) -> None:
+    """List the tables with counts and sources, or print one as CSV.
+
+    Example: fewnm data size_gap_records
+    """
+    from screening.describing import data_text, table_text
+
+    typer.echo(data_text() if name is None else table_text(name), nl=False)
+
+
+@app.command(epilog=_EPILOG)
+@_guarded
+def start(
+    file: Annotated[Path, typer.Argument(help="File to write.")] = Path("specification.toml"),
+) -> None:
+    """Write a commented specification to begin with; an existing file is kept.
+
+    Example: fewnm start my-emitter.toml
+    """
+    from screening.describing import write_start
+
+    write_start(file)
+    _say(f"Wrote {file}; run it with: fewnm rank {file} --out my-run")
+
+
+@app.command(epilog=_EPILOG)
+@_guarded
+def doctor() -> None:
+    """Check the environment: versions, tables, cache folder.
+
+    Example: fewnm doctor
+    """
+    from screening.describing import doctor_text
+
+    typer.echo(doctor_text(), nl=False)
+
+
+def main() -> None:
+    """Run the command line."""
+    app(prog_name="fewnm")

@@ -1,0 +1,105 @@
+"""One run from specification to files."""
+
+import json
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from features.tables import read_table
+from screening.fingerprint import text_hash
+from screening.outputs import (
+    build_manifest,
+    csv_text,
+    json_text,
+    prepare_folder,
+    write_atomically,
+    write_parquet,
+)
+from screening.ranking import RankResult, rank
+from screening.specification import Specification
+from screening.trained import dot_fingerprint, evidence_hash, trained_dots
+
+__all__ = ["RankRun", "held_out_figures", "run_rank"]
+
+
+@dataclass(frozen=True)
+class RankRun:
+    """A finished run: its result, folder and manifest."""
+
+    result: RankResult
+    folder: Path
+    manifest: dict[str, Any]
+
+
+def held_out_figures() -> pd.DataFrame:
+    """Return the packaged figures of the nested evaluation, if they belong to these tables.
+
+    Returns
+    -------
+    pandas.DataFrame
+        Columns figure, state, value, low, high, median, worst, worst_group, n_groups, n_rows;
+        empty where the packaged figures were measured on other tables or another model.
+    """
+    figures = read_table("held_out_figures")
+    current = figures[figures["evidence_hash"].eq(evidence_hash())]
+    return current.drop(columns="evidence_hash").reset_index(drop=True)
+
+
+def run_rank(specification: Specification, folder: Path, *, overwrite: bool = False) -> RankRun:
+    """Rank a specification and write the results.
+
+    Parameters
+    ----------
+    specification : Specification
+    folder : pathlib.Path
+        Output folder; made if missing.
+    overwrite : bool, default False
+        Replace an earlier run.
+
+    Returns
+    -------
+    RankRun
+
+    Raises
+    ------
+    OutputError
+        If the folder cannot take the results.
+    SpecificationError, NothingQualifiesError
+        As `screening.ranking.rank`; nothing is written then.
+    """
+    from screening.reporting.report import render_report  # noqa: PLC0415 - figures load slowly
+
+    result = rank(specification, trained_dots(specification.seed))
+    model_hash = dot_fingerprint(specification.seed)
+    table = csv_text(result.shortlist)
+    prepare_folder(folder, overwrite=overwrite)
+    write_atomically(folder / "shortlist.csv", table)
+    write_atomically(folder / "shortlist.json", json_text(result.shortlist, "shortlist"))
+    write_parquet(folder / "shortlist.parquet", result.shortlist)
+    write_atomically(folder / "rejected.csv", csv_text(result.rejected))
+    files = ["shortlist.csv", "shortlist.json", "shortlist.parquet", "rejected.csv"]
+    manifest = build_manifest(
+        specification=specification.model_dump(mode="json"),
+        model_hash=model_hash,
+        folder=folder,
+        files=files,
+        result_hash=text_hash(table),
+        warnings=_warnings(result),
+    )
+    report = render_report(result, manifest, held_out_figures())
+    write_atomically(folder / "report.html", report)
+    write_atomically(folder / "manifest.json", json.dumps(manifest, indent=2, ensure_ascii=False))
+    return RankRun(result, folder, manifest)
+
+
+def _warnings(result: RankResult) -> list[str]:
+    """Say what a reader should know before acting."""
+    notes = []
+    new = result.shortlist["record_state"].eq("new").sum()
+    if new:
+        notes.append(f"{new} of {len(result.shortlist)} rows are materials without size data")
+    if result.shortlist["chance_in_window"].iloc[0] < 0.5:
+        notes.append("no candidate is more likely to hit the window than to miss it")
+    return notes
