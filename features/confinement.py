@@ -49,7 +49,9 @@ def _positive(**values: ArrayLike) -> list[FloatArray]:
         array = np.asarray(value, dtype=np.float64)
         if not np.all(np.isfinite(array)) or np.any(array <= 0.0):
             found = array.ravel()[~((array > 0.0) & np.isfinite(array)).ravel()][0]
-            raise PhysicsRangeError(explain(f"{name} out of range", expected="> 0", found=f"{found}"))
+            raise PhysicsRangeError(
+                explain(f"{name} out of range", expected="> 0", found=f"{found}")
+            )
         arrays.append(array)
     return arrays
 
@@ -350,13 +352,15 @@ def finite_barrier_energy_eV(
     ratio = mass / outside
     for _ in range(60):
         middle = 0.5 * (low + high)
-        decay = radius * np.sqrt(outside / KINETIC_eV_nm2 * barrier) * np.sqrt(
-            np.maximum(1.0 - (middle / limit) ** 2, 0.0)
+        decay = (
+            radius
+            * np.sqrt(outside / KINETIC_eV_nm2 * barrier)
+            * np.sqrt(np.maximum(1.0 - (middle / limit) ** 2, 0.0))
         )
         below = middle / np.tan(middle) - 1.0 + ratio * (1.0 + decay) > 0.0
         low, high = np.where(below, middle, low), np.where(below, high, middle)
     energy: Any = KINETIC_eV_nm2 * (0.5 * (low + high) / radius) ** 2 / mass
-    return np.minimum(energy, barrier)
+    return np.asarray(np.minimum(energy, barrier))
 
 
 def finite_barrier_gap_eV(

@@ -93,7 +93,9 @@ class ConfinementFeatures(TransformerMixin, BaseEstimator):
         index = X.index if isinstance(X, pd.DataFrame) else None
         values = validate_data(self, X, dtype=np.float64, reset=False)
         inputs = [
-            np.maximum(values[:, i], floor) if i < values.shape[1] else np.full(len(values), default)
+            np.maximum(values[:, i], floor)
+            if i < values.shape[1]
+            else np.full(len(values), default)
             for i, (default, floor) in enumerate(zip(_DEFAULTS, _FLOORS, strict=True))
         ]
         columns = [*_physics(*inputs), *values[:, len(_INPUTS) :].T]

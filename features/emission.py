@@ -51,7 +51,9 @@ def wavelength_nm(energy_eV: ArrayLike) -> FloatArray:
     """
     energy = np.asarray(energy_eV, dtype=np.float64)
     with np.errstate(divide="ignore"):
-        return np.where(energy > 0.0, HC_eV_nm / np.where(energy > 0.0, energy, 1.0), np.nan)
+        return np.asarray(
+            np.where(energy > 0.0, HC_eV_nm / np.where(energy > 0.0, energy, 1.0), np.nan)
+        )
 
 
 @cache

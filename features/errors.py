@@ -63,7 +63,9 @@ class OutputError(FewnmError, OSError):
     """The output folder cannot take the results."""
 
 
-def explain(what: str, *, where: str = "", expected: str = "", found: str = "", do: str = "") -> str:
+def explain(
+    what: str, *, where: str = "", expected: str = "", found: str = "", do: str = ""
+) -> str:
     """Build one message: what is wrong, where, what was expected and found, what to do.
 
     Parameters

@@ -1,8 +1,9 @@
 """Training rows of the emission track: cited records as optical gaps with their own noise.
 
-Records below 1.5 nm and magic-size clusters (some hundred atoms and fewer, where band models have
-no meaning) stay in the table but do not train. Emission records become optical gaps by the Stokes shift of
-their material, whose uncertainty joins the row's noise. A curve's sampled points share one vote.
+Records below 1.5 nm and magic-size clusters (some hundred atoms and fewer, where band models
+have no meaning) stay in the table but do not train. Emission records become optical gaps by the
+Stokes shift of their material, whose uncertainty joins the row's noise. A curve's sampled points
+share one vote.
 """
 
 import numpy as np
@@ -46,7 +47,7 @@ def size_band(diameter_nm: object) -> np.ndarray:
     >>> size_band([1.8, 3.5, 12.0]).tolist()
     [0, 2, 5]
     """
-    return np.digitize(np.asarray(diameter_nm, dtype=float), SIZE_BANDS_nm)
+    return np.asarray(np.digitize(np.asarray(diameter_nm, dtype=float), SIZE_BANDS_nm))
 
 
 def size_gap_rows(records: pd.DataFrame) -> pd.DataFrame:

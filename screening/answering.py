@@ -97,9 +97,11 @@ def render(answer: pd.DataFrame, form: str) -> str:
         return csv_text(answer)
     blocks = []
     for row in answer.to_dict("records"):
-        width = max(len(name) for name in row)
+        width = max(len(str(name)) for name in row)
         lines = [
-            f"{name:<{width}}  {value:.4g}" if isinstance(value, float) else f"{name:<{width}}  {value}"
+            f"{name:<{width}}  {value:.4g}"
+            if isinstance(value, float)
+            else f"{name:<{width}}  {value}"
             for name, value in row.items()
         ]
         blocks.append("\n".join(lines))

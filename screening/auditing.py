@@ -7,7 +7,13 @@ import pandas as pd
 
 from features.size_gap import training_rows
 from screening.dot_evaluation import evaluate_dots, summarise
-from screening.outputs import SCHEMA_VERSION, csv_text, prepare_folder, write_atomically, write_parquet
+from screening.outputs import (
+    SCHEMA_VERSION,
+    csv_text,
+    prepare_folder,
+    write_atomically,
+    write_parquet,
+)
 from screening.trained import evidence_hash
 
 __all__ = ["audit_text", "run_audit"]

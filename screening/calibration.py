@@ -113,9 +113,7 @@ class GroupCalibration:
         self.refused_ = tuple(level for level in self.levels if level not in supported)
         if not supported:
             raise CalibrationError(self._refusal(min(self.levels)))
-        self.factors_ = {
-            level: _weighted_quantile(scores, weights, level) for level in supported
-        }
+        self.factors_ = {level: _weighted_quantile(scores, weights, level) for level in supported}
         self._nodes()
         return self
 
@@ -125,7 +123,7 @@ class GroupCalibration:
         calibration = cls(tuple(sorted(factors)), state)
         calibration.n_groups_, calibration.refused_ = n_groups, ()
         calibration.factors_ = dict(factors)
-        calibration._nodes()  # noqa: SLF001 - its own class
+        calibration._nodes()
         return calibration
 
     def _nodes(self) -> None:
@@ -184,7 +182,7 @@ class GroupCalibration:
         size = np.abs(np.asarray(z, dtype=float))
         inside = np.interp(size, self._z, self._normal)
         beyond = size * (self._normal[-1] / self._z[-1])
-        return np.sign(z) * np.where(size > self._z[-1], beyond, inside)
+        return np.asarray(np.sign(z) * np.where(size > self._z[-1], beyond, inside))
 
     def cdf(self, value: Any, mean: Any, sd: Any) -> FloatArray:
         """Return the calibrated chance that the truth lies below a value.

@@ -149,8 +149,14 @@ def _shortlist_text(result: Any) -> str:
     columns = ["rank", "material", "diameter_nm", "emission_nm", "fwhm_meV", "chance_in_window"]
     columns += ["fraction_in_window", "size_tolerance_nm", "record_state"]
     table = result.shortlist[columns].round(
-        {"diameter_nm": 2, "emission_nm": 0, "fwhm_meV": 0, "chance_in_window": 2,
-         "fraction_in_window": 2, "size_tolerance_nm": 2}
+        {
+            "diameter_nm": 2,
+            "emission_nm": 0,
+            "fwhm_meV": 0,
+            "chance_in_window": 2,
+            "fraction_in_window": 2,
+            "size_tolerance_nm": 2,
+        }
     )
     return str(table.to_string(index=False))
 

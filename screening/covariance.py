@@ -96,7 +96,7 @@ def _mask(
     mask: FloatArray | None = None
     if term.labels:
         a, b = left[:, term.labels], right[:, term.labels]
-        known = (a >= 0).all(axis=1)[:, None]
+        known = np.all(a >= 0, axis=1, keepdims=True)
         mask = ((a[:, None, :] == b[None, :, :]).all(axis=2) & known).astype(np.float64)
         if same_rows:
             np.fill_diagonal(mask, 1.0)

@@ -44,7 +44,8 @@ def evaluate_dots(rows: pd.DataFrame, n_jobs: int = 1, seed: int = 0) -> pd.Data
     parts = Parallel(n_jobs=n_jobs)(
         delayed(_leave_material)(rows, material, seed) for material in materials
     )
-    return pd.concat([frame for frames in parts for frame in frames], ignore_index=True)
+    frames: list[pd.DataFrame] = [frame for part in parts for frame in part]
+    return pd.concat(frames, ignore_index=True)
 
 
 def _leave_material(rows: pd.DataFrame, material: str, seed: int) -> list[pd.DataFrame]:
@@ -104,7 +105,9 @@ def _binomial(share: float, n_groups: int) -> tuple[float, float]:
     return float(low), float(high)
 
 
-def _row(figure: str, state: str, groups: pd.Series, ends: tuple[float, float], n_rows: int) -> dict[str, object]:
+def _row(
+    figure: str, state: str, groups: pd.Series, ends: tuple[float, float], n_rows: int
+) -> dict[str, object]:
     return {
         "figure": figure,
         "state": state,
@@ -132,13 +135,18 @@ def _state_figures(frame: pd.DataFrame, state: str) -> Iterable[dict[str, object
     groups = _by_group((read["predicted_gap_eV"] - read["optical_gap_eV"]).abs(), read)
     yield _row(
         "mean_absolute_error_eV, without low-confidence records",
-        state, groups, _bootstrap(groups), len(read),
+        state,
+        groups,
+        _bootstrap(groups),
+        len(read),
     )
     for level in LEVELS:
         name = f"{level:.0%}".rstrip("%")
         inside = observed.between(frame[f"low_{name}"], frame[f"high_{name}"]).astype(float)
         groups = _by_group(inside, frame)
-        row = _row(f"coverage_{name}", state, groups, _binomial(groups.mean(), len(groups)), len(frame))
+        row = _row(
+            f"coverage_{name}", state, groups, _binomial(groups.mean(), len(groups)), len(frame)
+        )
         yield row | {"worst": float(groups.min()), "worst_group": str(groups.idxmin())}
         width = _by_group(frame[f"high_{name}"] - frame[f"low_{name}"], frame)
         yield _row(f"mean_width_{name}_eV", state, width, _bootstrap(width), len(frame))

@@ -19,7 +19,7 @@ from screening.blending import BlendedRegressor, LeftOut, blend
 from screening.calibration import GroupCalibration
 from screening.covariance import CovarianceTerm, FloatArray
 
-__all__ = ["ON_RECORD", "NEW", "SizeGapModel", "State", "range_groups"]
+__all__ = ["NEW", "ON_RECORD", "SizeGapModel", "State", "range_groups"]
 
 ON_RECORD = "on record"
 NEW = "new"
@@ -88,9 +88,7 @@ class SizeGapModel:
         self.seed = seed
         self.n_folds = n_folds
 
-    def fit(
-        self, rows: pd.DataFrame, theta: Sequence[float] | None = None
-    ) -> Self:
+    def fit(self, rows: pd.DataFrame, theta: Sequence[float] | None = None) -> Self:
         """Fit both regressors.
 
         Parameters
@@ -110,9 +108,9 @@ class SizeGapModel:
         self._target = (self.rows_["optical_gap_eV"].to_numpy() - mean) / scale
         self._noise = self.rows_["noise_eV"].to_numpy() / scale
         self._scale = scale
-        votes = self.rows_["vote"] / self.rows_["vote"].groupby(
-            self.rows_["material"]
-        ).transform("sum")
+        votes = self.rows_["vote"] / self.rows_["vote"].groupby(self.rows_["material"]).transform(
+            "sum"
+        )
         self.regressor_ = BlendedRegressor(
             terms=_TERMS,
             tree_columns=range(_N_GAUSSIAN, X.shape[1]),
@@ -198,8 +196,9 @@ class SizeGapModel:
         X, mean, scale = self._columns(candidates, training=False)
         gaussian, trees, sd = self.regressor_.parts(X)
         state = self.record_state(candidates["material"])
-        weight = state.map({k: s.gaussian_weight for k, s in self.states_.items()}).to_numpy()
-        learned, spread = blend(gaussian, trees, sd, weight)
+        weights = {name: part.gaussian_weight for name, part in self.states_.items()}
+        weight = state.map(weights).to_numpy(dtype=np.float64)
+        learned, spread = blend(gaussian, trees, sd, np.asarray(weight, dtype=np.float64))
         noise = self.regressor_.gaussian_.noise_
         bulk_sd = candidates["gap_sd_eV"].to_numpy() / scale
         total = np.sqrt(spread**2 + noise**2 + bulk_sd**2) * scale
@@ -251,14 +250,14 @@ class SizeGapModel:
     ) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Return regressor columns, physics mean (eV) and scale (eV) of rows."""
         features = ConfinementFeatures().fit_transform(frame[_CONSTANTS])
-        smooth = [
-            (features[name] - centre) / width for name, (centre, width) in _CENTRES.items()
-        ]
+        smooth = [(features[name] - centre) / width for name, (centre, width) in _CENTRES.items()]
         source = frame["source"] + " " + frame["material"] if training else None
-        labels = [
+        labels: list[pd.Series] = [
             frame["family"].map(self._codes["family"]),
             frame["material"].map(self._codes["material"]),
-            pd.Series(-1, index=frame.index) if source is None else source.map(self._codes["source"]),
+            pd.Series(-1, index=frame.index)
+            if source is None
+            else source.map(self._codes["source"]),
             (frame["shape"] + " " + frame["material"]).map(self._codes["shape"]),
             frame["shape"].ne("sphere").astype(float),
         ]

@@ -9,7 +9,14 @@ from typing import Any
 
 from features.tables import packaged_path, read_package
 
-__all__ = ["MODEL_FORMAT", "file_hash", "model_fingerprint", "package_version", "tables_hash", "text_hash"]
+__all__ = [
+    "MODEL_FORMAT",
+    "file_hash",
+    "model_fingerprint",
+    "package_version",
+    "tables_hash",
+    "text_hash",
+]
 
 MODEL_FORMAT = 1
 """Raised with every change of features, terms or training that alters predictions."""

@@ -203,7 +203,7 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
 
     def _noise_variance(self, theta: FloatArray | None = None) -> FloatArray:
         log_noise = (self.theta_ if theta is None else theta)[-1]
-        return self._row_variance + np.exp(2.0 * log_noise) + _JITTER
+        return np.asarray(self._row_variance + np.exp(2.0 * log_noise) + _JITTER)
 
     def _objective(
         self, theta: FloatArray, centre: FloatArray, spread: FloatArray
@@ -268,4 +268,4 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
             if term.scale is not None:
                 part *= X[:, term.scale] ** 2
             total += part
-        return total
+        return np.asarray(total)

@@ -116,12 +116,12 @@ def _inert(value: Any) -> Any:
 
 
 def csv_text(frame: pd.DataFrame) -> str:
-    """Return a frame as CSV with lines ending in a line feed.
+    r"""Return a frame as CSV with lines ending in a line feed.
 
     Examples
     --------
     >>> csv_text(pd.DataFrame({"material": ["=cmd()"]}))
-    "material\\n'=cmd()\\n"
+    "material\n'=cmd()\n"
     """
     text = frame.copy()
     for name in text.columns[[not pd.api.types.is_numeric_dtype(t) for t in text.dtypes]]:
@@ -130,11 +130,11 @@ def csv_text(frame: pd.DataFrame) -> str:
 
 
 def json_text(frame: pd.DataFrame, kind: str) -> str:
-    """Return a frame as JSON rows under a schema version; missing values become null.
+    r"""Return a frame as JSON rows under a schema version; missing values become null.
 
     Examples
     --------
-    >>> print(json_text(pd.DataFrame({"gap_eV": [1.5]}), "answer").replace("\\n", ""))
+    >>> print(json_text(pd.DataFrame({"gap_eV": [1.5]}), "answer").replace("\n", ""))
     {  "schema_version": 1,  "kind": "answer",  "rows": [    {      "gap_eV": 1.5    }  ]}
     """
     rows = [

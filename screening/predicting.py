@@ -69,8 +69,8 @@ def _material_faults(materials: pd.Series) -> list[str]:
         except FewnmError as error:
             wrong[text] = str(error)
     return [
-        f"row {index + 2}: {wrong[text]}"
-        for index, text in materials.fillna("").items()
+        f"row {number}: {wrong[text]}"
+        for number, text in enumerate(materials.fillna(""), start=2)
         if text in wrong
     ]
 

@@ -85,7 +85,7 @@ class RankResult:
         return draw_map(self, ax)
 
     def _repr_html_(self) -> str:
-        return str(self.shortlist.to_html(index=False, escape=True, float_format="%.3f"))
+        return str(self.shortlist.to_html(index=False, escape=True, float_format="{:.3f}".format))
 
 
 def rank(specification: Specification, model: SizeGapModel) -> RankResult:
@@ -147,7 +147,9 @@ def _shortlist(scored: pd.DataFrame, specification: Specification) -> pd.DataFra
     ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)])
     taken: dict[str, list[float]] = {}
     rows = []
-    for index, material, diameter in ordered[["material", "diameter_nm"]].itertuples(name=None):
+    for index, material, diameter in zip(
+        ordered.index, ordered["material"], ordered["diameter_nm"], strict=True
+    ):
         sizes = taken.setdefault(material, [])
         apart = all(abs(diameter - size) >= cut.spacing_nm for size in sizes)
         if apart and len(sizes) < cut.per_material:
@@ -168,7 +170,7 @@ def _missed(scored: pd.DataFrame, specification: Specification) -> pd.DataFrame:
 
 
 def _nothing(scored: pd.DataFrame, specification: Specification) -> str:
-    best = scored.loc[scored["chance_in_window"].idxmax()]
+    best = scored.iloc[int(np.argmax(scored["chance_in_window"]))]
     return explain(
         "no candidate qualifies",
         where="shortlist.least_chance",

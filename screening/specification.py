@@ -169,9 +169,7 @@ def _message(error: Any, where: str) -> str:
     if error["type"] == "value_error":
         return explain(str(error["ctx"]["error"]), where=place)
     found = repr(error.get("input"))
-    return explain(
-        "wrong value", where=place, expected=error["msg"], found=found[:80]
-    )
+    return explain("wrong value", where=place, expected=error["msg"], found=found[:80])
 
 
 def parse_specification(data: Mapping[str, Any], where: str = "") -> Specification:

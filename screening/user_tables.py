@@ -100,8 +100,12 @@ def _check_header(
         expected += f" and optionally {', '.join(optional)}"
     if len(header) == 1 and any(mark in header[0] for mark in ";\t|"):
         raise TableError(
-            explain("wrong delimiter", where=f"{path.name}, row 1", expected="commas",
-                    found=header[0][:60])
+            explain(
+                "wrong delimiter",
+                where=f"{path.name}, row 1",
+                expected="commas",
+                found=header[0][:60],
+            )
         )
     twice = sorted({name for name in header if header.count(name) > 1})
     missing = [name for name in required if name not in header]
