@@ -110,7 +110,11 @@ class ClosedForms:
         """Return atoms, counts and coordination sums for layers of shape (n_sizes, n_families)."""
         steps = np.asarray(layers, dtype=np.float64) - self.middle
         site_terms = _terms(steps, degree=2)
-        return _terms(steps, degree=3) @ self.atoms, site_terms @ self.counts, site_terms @ self.sums
+        return (
+            _terms(steps, degree=3) @ self.atoms,
+            site_terms @ self.counts,
+            site_terms @ self.sums,
+        )
 
 
 def _terms(steps: FloatArray, degree: int) -> FloatArray:
@@ -149,7 +153,7 @@ def _stencils(n_families: int) -> tuple[IntArray, IntArray, IntArray]:
 
 def _powers(n_families: int, degree: int) -> IntArray:
     grid = np.array(list(product(range(degree + 1), repeat=n_families)), dtype=np.int64)
-    return grid[grid.sum(axis=1) <= degree]
+    return np.asarray(grid[grid.sum(axis=1) <= degree])
 
 
 def closed_forms(
@@ -203,7 +207,7 @@ def closed_forms(
 def _solve(steps: IntArray, values: FloatArray, degree: int) -> tuple[FloatArray, float]:
     """Return the coefficients of least squares and the largest residual."""
     terms = _terms(steps.astype(np.float64), degree)
-    fit = np.linalg.lstsq(terms, values, rcond=None)[0]
+    fit = np.asarray(np.linalg.lstsq(terms, values, rcond=None)[0], dtype=np.float64)
     return fit, float(np.abs(terms @ fit - values).max())
 
 

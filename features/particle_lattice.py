@@ -127,7 +127,7 @@ def _cartesian(structure: str, c_over_a: float) -> FloatArray:
     if structure == "hcp":
         a1, a2 = np.array([1.0, 0.0, 0.0]), np.array([-0.5, np.sqrt(0.75), 0.0])
         return np.stack([a1 / 3.0, a2 / 3.0, np.array([0.0, 0.0, c_over_a / 2.0])])
-    return np.eye(3) / np.sqrt(2.0 if structure == "fcc" else 3.0)
+    return np.asarray(np.eye(3) / np.sqrt(2.0 if structure == "fcc" else 3.0))
 
 
 def _broken_by_offset(

@@ -87,7 +87,9 @@ def _candidates(
     lattice: CrystalLattice, half_width: IntArray, shift: IntArray
 ) -> tuple[IntArray, IntArray]:
     """Return all sites in a box about the origin, and the basis index of each."""
-    cells = [np.arange(-w // b - 1, w // b + 2) * b for w, b in zip(half_width, lattice.box)]
+    cells = [
+        np.arange(-w // b - 1, w // b + 2) * b for w, b in zip(half_width, lattice.box, strict=True)
+    ]
     corner = np.stack(np.meshgrid(*cells, indexing="ij"), axis=-1).reshape(-1, 3)
     sites = (corner[None, :, :] + lattice.basis[:, None, :] + shift).reshape(-1, 3)
     return sites, np.repeat(np.arange(len(lattice.basis)), len(corner))
@@ -99,7 +101,7 @@ def _half_width(normals: IntArray, offsets: IntArray) -> IntArray:
 
     planes = np.column_stack([normals, -(offsets + 0.5)]).astype(np.float64)
     corners = HalfspaceIntersection(planes, np.zeros(3)).intersections
-    return np.ceil(np.abs(corners).max(axis=0)).astype(np.int64)
+    return np.asarray(np.ceil(np.abs(corners).max(axis=0)), dtype=np.int64)
 
 
 def _neighbour_table(lattice: CrystalLattice, sites: IntArray, kind: IntArray) -> IntArray:

@@ -33,7 +33,7 @@ def _label(
     rows, index = np.unique(key, axis=0, return_inverse=True)
     class_index = np.full(len(positions), -1, dtype=np.int64)
     class_index[surface] = index.reshape(-1)
-    classes = tuple(SiteClass(*names[k], int(c)) for k, c in rows)
+    classes = tuple(SiteClass(names[k][0], names[k][1], int(c)) for k, c in rows)
     centred = positions - positions.mean(axis=0)
     return ExplicitParticle(centred, coordination, generalised, classes, class_index)
 
@@ -56,7 +56,11 @@ def _icosahedron_shell(shell: int) -> tuple[FloatArray, IntArray]:
     inner = np.array([(a, b) for a in range(1, shell) for b in range(1, shell - a)], dtype=int)
     weights = np.column_stack([inner, shell - inner.sum(axis=1)]) if len(inner) else inner
     on_faces = [weights @ corners[list(face)] for face in faces] if len(inner) else []
-    groups = [shell * corners, np.concatenate(on_edges), np.concatenate([np.empty((0, 3)), *on_faces])]
+    groups = [
+        shell * corners,
+        np.concatenate(on_edges),
+        np.concatenate([np.empty((0, 3)), *on_faces]),
+    ]
     kind = np.repeat([0, 1, 2], [len(g) for g in groups])
     return np.concatenate(groups), kind.astype(np.int64)
 
@@ -141,4 +145,6 @@ def decahedron_particle(n_rings: int) -> ExplicitParticle:
         ("terrace", "(100)"),
         ("vertex", "(111)"),
     )
-    return _label(np.concatenate([p for p, _ in rings]), np.concatenate([k for _, k in rings]), names)
+    return _label(
+        np.concatenate([p for p, _ in rings]), np.concatenate([k for _, k in rings]), names
+    )

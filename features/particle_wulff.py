@@ -33,8 +33,8 @@ Energies = tuple[tuple[str, float], ...]
 
 _SMALLEST_AREA_SHARE = 0.05
 _FIT_ATOMS = (1500.0, 6000.0, 24000.0)
-# layers of (111), (100), (110) that leave every facet wide: all shapes on which the same facets meet
-# have the same closed forms
+# layers of (111), (100), (110) that leave every facet wide: all shapes on which the same facets
+# meet have the same closed forms
 _ROOMY_FCC = (30, 15, 25)
 _BLEND_ATOMS = (500.0, 4000.0)
 _N_RUNGS = 300
