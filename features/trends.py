@@ -19,7 +19,6 @@ __all__ = [
     "kane_electron_mass",
     "optical_dielectric_from_gap",
     "penn_dielectric",
-    "reduced_mass",
 ]
 
 FloatArray = NDArray[np.float64]
@@ -29,7 +28,8 @@ _MOSS_EV = 95.0
 _HERVE_A_EV, _HERVE_B_EV = 13.6, 3.4
 _RAVINDRA = (4.084, 0.62)
 _RAVINDRA_WIDEST_EV = 4.5
-_HBAR2_OVER_E0_M0_EV2_NM3 = 1.3788e0  # (hbar w_p)^2 per electron in one nm^3: e^2 hbar^2/(eps0 m0)
+# Squared plasma energy of one electron in a nm^3: (e hbar)^2 / (eps0 m0).
+_PLASMA_EV2_NM3 = 1.3788
 _TYPICAL_KANE_EV = 20.0
 
 
@@ -178,32 +178,4 @@ def penn_dielectric(average_gap_eV: Any, electrons_per_nm3: Any) -> FloatArray:
     """
     gap = _positive("average gap", average_gap_eV)
     density = _positive("electron density", electrons_per_nm3, unit="per nm^3")
-    return np.asarray(1.0 + _HBAR2_OVER_E0_M0_EV2_NM3 * density / gap**2)
-
-
-def reduced_mass(electron_mass_m0: Any, hole_mass_m0: Any) -> FloatArray:
-    """Return the reduced mass of an electron and a hole.
-
-    Parameters
-    ----------
-    electron_mass_m0, hole_mass_m0 : array-like
-        Above 0.
-
-    Returns
-    -------
-    ndarray
-        Below either mass.
-
-    Raises
-    ------
-    PhysicsRangeError
-        If a mass is not above 0.
-
-    Examples
-    --------
-    >>> reduced_mass(0.13, 0.45).round(3).item()
-    0.101
-    """
-    electron = _positive("electron mass", electron_mass_m0, unit="m0")
-    hole = _positive("hole mass", hole_mass_m0, unit="m0")
-    return np.asarray(electron * hole / (electron + hole))
+    return np.asarray(1.0 + _PLASMA_EV2_NM3 * density / gap**2)

@@ -13,7 +13,6 @@ from features.trends import (
     kane_electron_mass,
     optical_dielectric_from_gap,
     penn_dielectric,
-    reduced_mass,
 )
 
 gaps = st.floats(0.05, 4.4)
@@ -93,12 +92,6 @@ def test_penn_model_uses_the_plasma_energy_of_the_valence_electrons():
     assert penn_dielectric(4.8, density) == pytest.approx(1.0 + plasma_eV2 / 4.8**2, rel=1e-4)
 
 
-@given(st.floats(0.01, 2.0), st.floats(0.01, 2.0))
-def test_reduced_mass_is_symmetric_and_below_both(electron, hole):
-    assert reduced_mass(electron, hole) == reduced_mass(hole, electron)
-    assert reduced_mass(electron, hole) < min(electron, hole)
-
-
 @pytest.mark.parametrize(
     "call",
     [
@@ -109,7 +102,6 @@ def test_reduced_mass_is_symmetric_and_below_both(electron, hole):
         lambda: optical_dielectric_from_gap(5.0, "ravindra"),
         lambda: penn_dielectric(4.0, 0.0),
         lambda: kane_electron_mass(0.0, 20.0),
-        lambda: reduced_mass(0.1, 0.0),
     ],
 )
 def test_values_outside_the_validity_are_refused(call):
