@@ -61,7 +61,8 @@ def _descriptors() -> pd.DataFrame:
             "sp_character": (table["group"] >= 13).astype(float) + 0.5 * (table["group"] == 12),
         }
     )
-    return frame.loc[frame.notna().all(axis=1), list(METAL_DESCRIPTORS)].sort_index()
+    complete = frame.loc[frame.notna().all(axis=1), list(METAL_DESCRIPTORS)]
+    return complete.astype(np.float64).sort_index()
 
 
 def metal_descriptors() -> pd.DataFrame:

@@ -1,0 +1,424 @@
+"""Adsorption energies of metals and binary alloys: surfaces, and the sites of particles.
+
+Energies in eV against one common reference per adsorbate (`features.adsorption`), as the
+reference source's functional gives them; negative binds. Intervals hold 90 % of the left-out
+groups of the state that `record_state` names: they come from residuals of metals, elements or
+compositions that were left out, never from rows that the model saw.
+"""
+
+from collections.abc import Collection
+from functools import lru_cache
+from typing import Any, Self
+
+import numpy as np
+import pandas as pd
+
+from features.adsorption_descriptors import (
+    alloy_parts,
+    standardised_descriptors,
+)
+from features.errors import SpecificationError, TableError, explain
+from features.tables import read_table
+from screening.adsorption_alloys import AlloySurfaceModel
+from screening.adsorption_design import FAMILIES, alloy_rows, family_of
+from screening.adsorption_pure import PureSurfaceModel, facet_openness, pure_rows
+from screening.adsorption_rules import HollowRule
+from screening.adsorption_sites import SiteShifts
+from screening.calibration import GroupCalibration
+from screening.covariance import FloatArray
+
+__all__ = ["LEVEL", "RECORD_STATES", "AdsorptionModel", "adsorption_model", "pure_models_without"]
+
+LEVEL = 0.9
+"""Central level of the intervals."""
+
+RECORD_STATES = (
+    "tabulated surface",
+    "metal with other data",
+    "new metal",
+    "tabulated composition",
+    "new composition",
+    "new element",
+    "mixing rule",
+)
+"""What stands behind a prediction."""
+
+_STRUCTURES = ("fcc", "hcp", "bcc", "L10", "L12")
+_FACETS = ("111", "0001", "110", "100", "211", "101")
+_NORMAL_90 = 1.6448536269514722
+_ORDERED_FACETS = frozenset({"101", "111", "0001"})
+
+
+def pure_models_without(
+    pure: PureSurfaceModel, elements: Collection[str]
+) -> dict[str, PureSurfaceModel]:
+    """Return models of pure metals, each without one element, covariance parameters kept."""
+    rows = pure.rows_.drop(columns="reference")
+    return {
+        e: PureSurfaceModel().fit(rows[rows["metal"] != e], pure.gaussian_.theta_, max_iter=0)
+        for e in elements
+    }
+
+
+class AdsorptionModel:
+    """Surfaces of metals and binary alloys, and sites of particles made of them.
+
+    Attributes
+    ----------
+    pure_ : PureSurfaceModel
+    families_ : dict of str to AlloySurfaceModel
+    rule_ : HollowRule
+    sites_ : SiteShifts
+    calibrations_ : dict of str to GroupCalibration
+        By state, for pure metals.
+    """
+
+    def fit(self, pure: pd.DataFrame | None = None, alloys: pd.DataFrame | None = None) -> Self:
+        """Fit from the packaged tables, or from rows of the same form.
+
+        Parameters
+        ----------
+        pure : pandas.DataFrame or None, default None
+            As from `pure_rows`.
+        alloys : pandas.DataFrame or None, default None
+            As from `alloy_rows`.
+
+        Returns
+        -------
+        self
+        """
+        self.pure_ = PureSurfaceModel().fit(pure_rows() if pure is None else pure)
+        self.alloys_ = _shifted(alloy_rows() if alloys is None else alloys, self.pure_)
+        self._calibrate_pure()
+        self.sites_ = SiteShifts().fit(self.pure_.rows_)
+        self.rule_ = HollowRule().fit(self.alloys_, self.pure_)
+        members = sorted(set(self.alloys_["first"]) | set(self.alloys_["second"]))
+        without = pure_models_without(self.pure_, members)
+        self.families_ = {
+            name: AlloySurfaceModel(adsorbates)
+            .fit(self.alloys_, self.pure_)
+            .calibrate_elements(without)
+            for name, adsorbates in FAMILIES.items()
+        }
+        return self
+
+    @property
+    def adsorbates(self) -> list[str]:
+        """Adsorbates that can be predicted."""
+        return list(self.pure_.adsorbates_)
+
+    def predict_surfaces(self, frame: pd.DataFrame) -> pd.DataFrame:
+        """Predict the most stable site of extended surfaces.
+
+        Parameters
+        ----------
+        frame : pandas.DataFrame
+            Columns material (``Pt``, ``Pt3Ni``, ``AgAu``) and adsorbate; structure and facet are
+            optional and may be empty: the close-packed face then. A shift measured between faces
+            of pure metals leads to open faces.
+
+        Returns
+        -------
+        pandas.DataFrame
+            Index and order of `frame`; adsorption_energy_eV, adsorption_energy_low_eV,
+            adsorption_energy_high_eV (90 %), adsorption_energy_sd_eV, record_state and
+            nearest_source.
+
+        Raises
+        ------
+        TableError
+            If a column is missing, or a structure or facet is unknown.
+        SpecificationError
+            If an adsorbate is unknown.
+        FormulaError, UnknownMaterialError
+            If a material cannot be read or has an element without data.
+        """
+        rows = self._read(frame)
+        result = pd.concat([self._pure(rows), self._alloys(rows)]).reindex(rows.index)
+        result.index = frame.index
+        return result
+
+    def predict_sites(self, material: str, adsorbate: str, sites: pd.DataFrame) -> pd.DataFrame:
+        """Predict the sites of a particle by their generalised coordination.
+
+        Parameters
+        ----------
+        material, adsorbate : str
+        sites : pandas.DataFrame
+            One row a site class with generalised_coordination (neighbours over the bulk's); other
+            columns such as coordination and facet are not needed.
+
+        Returns
+        -------
+        pandas.DataFrame
+            Index and order of `sites`; columns as in `predict_surfaces`, and terrace_sd_eV (common
+            to all sites of the material) and site_sd_eV (each site's own).
+
+        Raises
+        ------
+        TableError
+            If the column is missing or its values are not above 0 and at most 12.
+        """
+        if "generalised_coordination" not in sites:
+            raise TableError(
+                explain("no column 'generalised_coordination'", found=", ".join(sites.columns))
+            )
+        coordination = sites["generalised_coordination"].to_numpy(dtype=np.float64)
+        if not np.all((coordination > 0.0) & (coordination <= 12.0)):
+            raise TableError(explain("generalised coordination", expected="above 0, at most 12"))
+        terrace = self.predict_surfaces(
+            pd.DataFrame({"material": [material], "adsorbate": [adsorbate]})
+        ).iloc[0]
+        first, second, share = alloy_parts(material)
+        parts = {first: 1.0} if first == second else {first: share, second: 1.0 - share}
+        shift, sd = self.sites_.shift(parts, adsorbate, coordination, _structure(first))
+        return _site_frame(terrace, shift, sd, sites.index)
+
+    def source_offsets(self) -> pd.DataFrame:
+        """Return the fitted offset of every source and adsorbate: see `PureSurfaceModel`."""
+        return self.pure_.source_offsets()
+
+    def _calibrate_pure(self) -> None:
+        """Learn the intervals of the three states of pure metals from rows left out."""
+        rows = self.pure_.rows_
+        own = (rows["reference"] & (rows["openness"] == 0.0)).to_numpy()
+        surface = rows["metal"] + " " + rows["adsorbate"]
+        twice = surface.map(surface[rows["openness"] == 0.0].value_counts()).to_numpy() > 1
+        single = pd.Series(np.arange(len(rows)), index=rows.index)
+        states = {
+            "new metal": (rows["metal"], own),
+            "metal with other data": (surface, own),
+            "tabulated surface": (single, own & twice),
+        }
+        self.calibrations_ = {
+            state: self._calibration(state, groups, kept)
+            for state, (groups, kept) in states.items()
+        }
+
+    def _calibration(self, state: str, groups: pd.Series, kept: FloatArray) -> GroupCalibration:
+        left = self.pure_.leave_out(groups.to_numpy())[kept]
+        residual = left["energy_eV"] - left["predicted_eV"]
+        return GroupCalibration(state=state).fit(residual, left["sd_eV"], left["metal"])
+
+    def _read(self, frame: pd.DataFrame) -> pd.DataFrame:
+        """Check the table and split materials into metals and shares."""
+        missing = [c for c in ("material", "adsorbate") if c not in frame]
+        if missing:
+            raise TableError(
+                explain(f"no column {missing[0]!r}", found=", ".join(map(str, frame.columns)))
+            )
+        known = set(self.pure_.adsorbates_)
+        for position, adsorbate in enumerate(frame["adsorbate"]):
+            if adsorbate not in known:
+                raise SpecificationError(
+                    explain(
+                        "unknown adsorbate",
+                        where=f"row {position + 1}",
+                        expected=f"one of {', '.join(sorted(known))}",
+                        found=repr(adsorbate),
+                    )
+                )
+        parts = [alloy_parts(str(material)) for material in frame["material"]]
+        rows = pd.DataFrame(parts, columns=["first", "second", "share"])
+        structure = _choices(frame, "structure", _STRUCTURES)
+        facet = _choices(frame, "facet", _FACETS)
+        openness = [
+            _openness(first, s, f)
+            for first, s, f in zip(rows["first"], structure, facet, strict=True)
+        ]
+        return rows.assign(adsorbate=frame["adsorbate"].to_numpy(), openness=openness, hollow=False)
+
+    def _pure(self, rows: pd.DataFrame) -> pd.DataFrame:
+        pure = rows[rows["first"] == rows["second"]]
+        if pure.empty:
+            return _result(pure, np.empty(0), np.empty(0), np.empty(0), [], [])
+        found = self.pure_.predict(
+            pure["first"].tolist(), pure["adsorbate"].tolist(), pure["openness"].to_numpy()
+        )
+        state = [self._pure_state(row) for row in pure.itertuples()]
+        factor = np.array([self.calibrations_[s].factor(LEVEL) for s in state])
+        near = [self._nearest_metal(row) for row in pure.itertuples()]
+        return _result(pure, found.mean, found.sd, factor * found.sd, state, near)
+
+    def _pure_state(self, row: Any) -> str:
+        table = self.pure_.rows_
+        own = table[table["metal"] == row.first]
+        if own.empty:
+            return "new metal"
+        same = own[own["adsorbate"] == row.adsorbate]
+        exact = (same["openness"] == row.openness).any()
+        return "tabulated surface" if exact else "metal with other data"
+
+    def _nearest_metal(self, row: Any) -> str:
+        table = self.pure_.rows_
+        table = table[table["adsorbate"] == row.adsorbate]
+        descriptors = standardised_descriptors()
+        gap = descriptors.loc[table["metal"]].to_numpy() - descriptors.loc[row.first].to_numpy()
+        distance = np.linalg.norm(gap, axis=1) + np.abs(table["openness"] - row.openness)
+        distance += 0.01 * ~table["reference"]
+        best = table.iloc[int(np.argmin(distance))]
+        return f"{best['source']}: {best['metal']}({best['facet']})"
+
+    def _alloys(self, rows: pd.DataFrame) -> pd.DataFrame:
+        alloys = rows[rows["first"] != rows["second"]]
+        parts = [self._family(part) for _, part in alloys.groupby("adsorbate", sort=False)]
+        return pd.concat(parts) if parts else alloys.head(0)
+
+    def _family(self, rows: pd.DataFrame) -> pd.DataFrame:
+        """Predict alloys of one adsorbate, state by state."""
+        name = family_of(str(rows["adsorbate"].iloc[0]))
+        state = np.array([self._alloy_state(name, row) for row in rows.itertuples()])
+        parts = [
+            self._alloy_part(name, str(s), rows[state == s]) for s in dict.fromkeys(state.tolist())
+        ]
+        return pd.concat(parts)
+
+    def _alloy_state(self, name: str | None, row: Any) -> str:
+        if name is None:
+            return "mixing rule"
+        model = self.families_[name]
+        table = model.rows_
+        members = set(table["first"]) | set(table["second"])
+        if {row.first, row.second} <= members:
+            table = table[table["adsorbate"] == row.adsorbate]
+            same = (table["first"] == row.first) & (table["second"] == row.second)
+            exact = same & ~table["hollow"] & np.isclose(table["share"], row.share)
+            return "tabulated composition" if exact.any() else "new composition"
+        enough = LEVEL in model.element_calibration_.factors_
+        return "new element" if enough else "mixing rule"
+
+    def _alloy_part(self, name: str | None, state: str, rows: pd.DataFrame) -> pd.DataFrame:
+        if name is None or state == "mixing rule":
+            mean, sd = self.rule_.predict(rows)
+            factor = self.rule_.calibration_.factor(LEVEL)
+        elif state == "new element":
+            mean, sd = self.families_[name].predict_new_element(rows)
+            factor = self.families_[name].element_calibration_.factor(LEVEL)
+        else:
+            mean, sd = self.families_[name].predict(rows)
+            factor = self.families_[name].calibration_.factor(LEVEL)
+        shift, shift_sd = self._open_face(rows)
+        half = np.hypot(factor * sd, _NORMAL_90 * shift_sd)
+        near = [self._nearest_alloy(row) for row in rows.itertuples()]
+        return _result(rows, mean + shift, np.hypot(sd, shift_sd), half, [state] * len(rows), near)
+
+    def _open_face(self, rows: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
+        """Return the shift of open alloy faces: the share-weighted mean over the pure metals."""
+        if not rows["openness"].any():
+            return np.zeros(len(rows)), np.zeros(len(rows))
+        species, openness = rows["adsorbate"].tolist(), rows["openness"].to_numpy()
+        share = rows["share"].to_numpy()
+        shift, sd = np.zeros(len(rows)), np.zeros(len(rows))
+        for metals, weight in ((rows["first"], share), (rows["second"], 1.0 - share)):
+            opened = self.pure_.predict(metals.tolist(), species, openness)
+            shift += weight * (opened.mean - self.pure_.predict(metals.tolist(), species).mean)
+            sd += weight * opened.sd * (openness > 0.0)
+        return shift, sd
+
+    def _nearest_alloy(self, row: Any) -> str:
+        table = self.alloys_[self.alloys_["adsorbate"] == row.adsorbate]
+        table = self.alloys_ if table.empty else table
+        metals = standardised_descriptors()
+        first, second = metals.loc[row.first].to_numpy(), metals.loc[row.second].to_numpy()
+        left, right = metals.loc[table["first"]].to_numpy(), metals.loc[table["second"]].to_numpy()
+        share = table["share"].to_numpy()
+        straight = _distance(left - first, right - second, share - row.share)
+        crossed = _distance(left - second, right - first, 1.0 - share - row.share)
+        best = table.iloc[int(np.argmin(np.minimum(straight, crossed)))]
+        return f"{best['source']}: {best['composition']}"
+
+
+def _distance(first: FloatArray, second: FloatArray, share: FloatArray) -> FloatArray:
+    squared = np.sum(first**2, axis=1) + np.sum(second**2, axis=1) + 4.0 * share**2
+    return np.asarray(np.sqrt(squared), dtype=np.float64)
+
+
+def _shifted(alloys: pd.DataFrame, pure: PureSurfaceModel) -> pd.DataFrame:
+    """Take the fitted offset of each alloy row's source off its energy."""
+    offsets = pure.source_offsets().set_index(["source", "adsorbate"])["offset_eV"]
+    keys = pd.MultiIndex.from_frame(alloys[["source", "adsorbate"]])
+    shift = offsets.reindex(keys).fillna(0.0).to_numpy()
+    return alloys.assign(energy_eV=alloys["energy_eV"] - shift)
+
+
+@lru_cache(maxsize=1)
+def _structures() -> dict[str, str]:
+    table = read_table("metals")
+    return dict(zip(table["element"].astype(str), table["structure"].astype(str), strict=True))
+
+
+def _structure(metal: str) -> str:
+    """Return the structure whose close-packed face stands for the metal."""
+    found = _structures()[metal]
+    return found if found in {"hcp", "bcc"} else "fcc"
+
+
+def _choices(frame: pd.DataFrame, column: str, known: tuple[str, ...]) -> list[str]:
+    """Return an optional column as text, empty where nothing is given."""
+    if column not in frame:
+        return [""] * len(frame)
+    texts = ["" if pd.isna(v) else str(v).strip().removesuffix(".0") for v in frame[column]]
+    texts = ["0001" if t == "1" and column == "facet" else t for t in texts]
+    for position, text in enumerate(texts):
+        if text and text not in known:
+            raise TableError(
+                explain(
+                    f"unknown {column}",
+                    where=f"row {position + 1}",
+                    expected=f"one of {', '.join(known)}, or empty",
+                    found=repr(text),
+                )
+            )
+    return texts
+
+
+def _openness(first: str, structure: str, facet: str) -> float:
+    if not facet or facet in _ORDERED_FACETS:
+        return 0.0
+    return facet_openness(structure or _structure(first), facet)
+
+
+def _result(
+    rows: pd.DataFrame,
+    mean: FloatArray,
+    sd: FloatArray,
+    half: FloatArray,
+    state: list[str],
+    near: list[str],
+) -> pd.DataFrame:
+    return pd.DataFrame(
+        {
+            "adsorption_energy_eV": mean,
+            "adsorption_energy_low_eV": mean - half,
+            "adsorption_energy_high_eV": mean + half,
+            "adsorption_energy_sd_eV": sd,
+            "record_state": state,
+            "nearest_source": near,
+        },
+        index=rows.index,
+    )
+
+
+def _site_frame(
+    terrace: pd.Series, shift: FloatArray, sd: FloatArray, index: pd.Index
+) -> pd.DataFrame:
+    mean = float(terrace["adsorption_energy_eV"]) + shift
+    common = float(terrace["adsorption_energy_sd_eV"])
+    half = 0.5 * (terrace["adsorption_energy_high_eV"] - terrace["adsorption_energy_low_eV"])
+    near = [str(terrace["nearest_source"])] * len(shift)
+    state = [str(terrace["record_state"])] * len(shift)
+    frame = _result(
+        pd.DataFrame(index=index),
+        mean,
+        np.hypot(common, sd),
+        np.hypot(float(half), _NORMAL_90 * sd),
+        state,
+        near,
+    )
+    return frame.assign(terrace_sd_eV=common, site_sd_eV=sd)
+
+
+@lru_cache(maxsize=1)
+def adsorption_model() -> AdsorptionModel:
+    """Return the model fitted on the packaged tables, fitted once a process."""
+    return AdsorptionModel().fit()
