@@ -137,18 +137,17 @@ def particle_rows(
     )
 
 
-def _stencils(n_families: int) -> tuple[IntArray, IntArray, IntArray]:
-    """Return steps that fix quadratics, further steps that fix cubics, and steps to check on.
+def _stencil(n_families: int) -> IntArray:
+    """Return steps from the middle that fix all cubics, and a few more to check on.
 
-    They stay within two layers of the middle, so that no facet appears or vanishes among them.
+    They stay within three layers, so that no facet appears or vanishes among them.
     """
     one = np.eye(n_families, dtype=np.int64)
-    pairs = list(combinations(range(n_families), 2))
-    quadratic = [0 * one[0], *one, *-one, *(one[i] + one[j] for i, j in pairs)]
-    cubic = [*(2 * one), *(one[i] - one[j] for i, j in permutations(range(n_families), 2))]
-    cubic += [one[i] + one[j] + one[k] for i, j, k in combinations(range(n_families), 3)]
-    checks = np.array([[2], [-2], [3]], dtype=np.int64) * one.sum(axis=0)
-    return np.array(quadratic), np.array(cubic), checks
+    steps = [0 * one[0], *one, *-one, *(2 * one), 3 * one.sum(axis=0), -2 * one.sum(axis=0)]
+    steps += [one[i] - one[j] for i, j in permutations(range(n_families), 2)]
+    for size in (2, 3):
+        steps += [one[list(few)].sum(axis=0) for few in combinations(range(n_families), size)]
+    return np.array(steps)
 
 
 def _powers(n_families: int, degree: int) -> IntArray:
@@ -156,17 +155,13 @@ def _powers(n_families: int, degree: int) -> IntArray:
     return np.asarray(grid[grid.sum(axis=1) <= degree])
 
 
-def closed_forms(
-    build: Callable[[IntArray], ExplicitParticle],
-    count: Callable[[IntArray], int],
-    middle: IntArray,
-) -> ClosedForms:
+def closed_forms(build: Callable[[IntArray], ExplicitParticle], middle: IntArray) -> ClosedForms:
     """Find the polynomials of the site counts near a particle, and check them.
 
     Parameters
     ----------
-    build, count : callable
-        Build the particle of given layers of each family, or only count its atoms.
+    build : callable
+        Builds the particle of given layers of each family.
     middle : ndarray of int, shape (n_families,)
         Layers of the particle about which to expand; within three layers of it all particles must
         have the same facets.
@@ -174,25 +169,23 @@ def closed_forms(
     Returns
     -------
     ClosedForms
-        Fitted to particles within two layers and checked on three others.
+        Sites quadratic, atoms cubic in the layers, fitted to particles within three layers; there
+        are more particles than coefficients, so a fit that holds has been checked.
 
     Examples
     --------
     >>> from features.particle_shapes import explicit_particle
-    >>> build = lambda n: explicit_particle("fcc", "octahedron", int(n[0]))
-    >>> forms = closed_forms(build, lambda n: build(n).n_atoms, np.array([5]))
+    >>> forms = closed_forms(lambda n: explicit_particle("fcc", "octahedron", int(n[0])),
+    ...     np.array([5]))
     >>> forms.is_exact, round(float(forms.at(np.array([[19.0]]))[0][0]))
     (True, 5340)
     """
-    quadratic, cubic, checks = _stencils(len(middle))
-    classed = np.concatenate([quadratic, checks])
-    particles = [build(middle + step) for step in classed]
+    steps = _stencil(len(middle))
+    particles = [build(middle + step) for step in steps]
     classes, counts, sums = particle_rows(particles)
-    atoms = np.array(
-        [float(p.n_atoms) for p in particles] + [float(count(middle + step)) for step in cubic]
-    )
-    site_fit, site_residual = _solve(classed, np.column_stack([counts, sums]), degree=2)
-    atom_fit, atom_residual = _solve(np.concatenate([classed, cubic]), atoms[:, None], degree=3)
+    atoms = np.array([float(p.n_atoms) for p in particles])
+    site_fit, site_residual = _solve(steps, np.column_stack([counts, sums]), degree=2)
+    atom_fit, atom_residual = _solve(steps, atoms[:, None], degree=3)
     n = len(classes)
     return ClosedForms(
         classes,
@@ -211,10 +204,10 @@ def _solve(steps: IntArray, values: FloatArray, degree: int) -> tuple[FloatArray
     return fit, float(np.abs(terms @ fit - values).max())
 
 
-def mean_generalised(counts: FloatArray, sums: FloatArray) -> FloatArray:
-    """Return sums over counts; not a number where there is hardly a site."""
-    safe = np.where(counts > 0.5, counts, np.nan)
-    return np.asarray(sums / safe)
+def mean_generalised(counts: FloatArray, sums: FloatArray, fewest: float = 0.5) -> FloatArray:
+    """Return sums over counts; not a number where a class has fewer sites than it ever reaches."""
+    least = np.minimum(fewest, counts.max(axis=0))
+    return np.asarray(sums / np.where(counts >= least, counts, np.nan))
 
 
 def shell_ladder(
@@ -242,9 +235,7 @@ def shell_ladder(
     >>> ladder.n_atoms[:3].tolist()
     [14.0, 63.0, 172.0]
     """
-    forms = closed_forms(
-        lambda n: build(int(n[0])), lambda n: build(int(n[0])).n_atoms, np.array([n_explicit - 3])
-    )
+    forms = closed_forms(lambda n: build(int(n[0])), np.array([n_explicit - 3]))
     built = [build(n) for n in range(1, n_explicit + 1)]
     classes, counts, sums = particle_rows(built)
     atoms = np.array([float(p.n_atoms) for p in built])

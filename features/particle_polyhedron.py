@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from features.particle_lattice import CrystalLattice, IntArray
 
-__all__ = ["ExplicitParticle", "SiteClass", "count_atoms", "cut_particle"]
+__all__ = ["ExplicitParticle", "SiteClass", "cut_particle"]
 
 FloatArray = NDArray[np.float64]
 
@@ -147,27 +147,6 @@ def _inside(lattice: CrystalLattice, layers: Mapping[str, int]) -> tuple[IntArra
     heights = sites.astype(np.float64) @ normals.T.astype(np.float64)
     kept = np.all(heights <= planes, axis=1)
     return sites[kept], kind[kept]
-
-
-def count_atoms(lattice: CrystalLattice, layers: Mapping[str, int]) -> int:
-    """Count the atoms that `cut_particle` would keep, without classing them.
-
-    Parameters
-    ----------
-    lattice, layers
-        As for `cut_particle`.
-
-    Returns
-    -------
-    int
-
-    Examples
-    --------
-    >>> from features.particle_lattice import crystal_lattice
-    >>> count_atoms(crystal_lattice("bcc"), {"(110)": 1})
-    15
-    """
-    return len(_inside(lattice, layers)[0])
 
 
 def cut_particle(lattice: CrystalLattice, layers: Mapping[str, int]) -> ExplicitParticle:

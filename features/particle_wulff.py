@@ -24,7 +24,7 @@ from features.particle_lattice import (
     IntArray,
     crystal_lattice,
 )
-from features.particle_polyhedron import ExplicitParticle, SiteClass, count_atoms, cut_particle
+from features.particle_polyhedron import ExplicitParticle, SiteClass, cut_particle
 
 __all__ = ["broken_bond_energies", "wulff_areas", "wulff_ladder", "wulff_particle"]
 
@@ -33,9 +33,16 @@ Energies = tuple[tuple[str, float], ...]
 
 _SMALLEST_AREA_SHARE = 0.05
 _FIT_ATOMS = (1500.0, 6000.0, 24000.0)
-# layers of (111), (100), (110) that leave every facet wide: all shapes on which the same facets
-# meet have the same closed forms
-_ROOMY_FCC = (30, 15, 25)
+# layers that leave every facet wide: all shapes on which the same facets meet have the same closed
+# forms
+_ROOMY = {
+    ("(111)", "(100)"): (13, 9),
+    ("(111)", "(100)", "(110)"): (29, 15, 25),
+    ("(110)", "(100)"): (13, 17),
+    ("(0001)", "(10-10)", "(10-11)"): (7, 8, 11),
+}
+# a closed form extrapolated below so few sites says little of their coordination
+_FEWEST_SITES = 6.0
 _BLEND_ATOMS = (500.0, 4000.0)
 _N_RUNGS = 300
 
@@ -140,8 +147,9 @@ def wulff_areas(lattice: CrystalLattice, energies_J_m2: Mapping[str, float]) -> 
 
 def _is_alike(lattice: CrystalLattice, energies: Energies, layers: IntArray) -> bool:
     """Tell whether the same facets meet in the Wulff shape and in a particle of given layers."""
-    lengths = [lattice.facets[name].length for name, _ in energies]
-    distances = {n: float(d) for (n, _), d in zip(energies, layers / lengths, strict=True)}
+    families = [lattice.facets[name] for name, _ in energies]
+    spacing = [(1 if lattice.structure == "fcc" else f.period) / f.length for f in families]
+    distances = {f.name: float(d) for f, d in zip(families, layers * spacing, strict=True)}
     both = [_corners(lattice, shape)[2].T.tolist() for shape in (dict(energies), distances)]
     first, second = ({tuple(corner) for corner in meets} for meets in both)
     return first == second
@@ -185,21 +193,20 @@ def _volume_per_site(lattice: CrystalLattice) -> float:
     return float(lattice.box.prod()) / len(lattice.basis)
 
 
-def _named(energies: Energies, layers: IntArray) -> dict[str, int]:
-    return dict(zip([name for name, _ in energies], layers.tolist(), strict=True))
+@cache
+def _forms_about(structure: str, names: tuple[str, ...], middle: tuple[int, ...]) -> ClosedForms:
+    lattice = crystal_lattice(structure)
+    return closed_forms(
+        lambda layers: cut_particle(lattice, dict(zip(names, layers.tolist(), strict=True))),
+        np.array(middle, dtype=np.int64),
+    )
 
 
 def _forms(lattice: CrystalLattice, energies: Energies) -> ClosedForms | None:
     """Return closed forms from the smallest particles that obey them, or None."""
-
-    def build(layers: IntArray) -> ExplicitParticle:
-        return cut_particle(lattice, _named(energies, layers))
-
-    def count(layers: IntArray) -> int:
-        return count_atoms(lattice, _named(energies, layers))
-
+    names = tuple(name for name, _ in energies)
     for middle in _middles(lattice, energies):
-        forms = closed_forms(build, count, middle)
+        forms = _forms_about(lattice.structure, names, tuple(middle.tolist()))
         if forms.is_exact:
             return forms
     return None
@@ -207,10 +214,9 @@ def _forms(lattice: CrystalLattice, energies: Energies) -> ClosedForms | None:
 
 def _middles(lattice: CrystalLattice, energies: Energies) -> list[IntArray]:
     """Return particles about which closed forms may be found, the likeliest first."""
-    if lattice.structure == "fcc" and len(energies) == 3:
-        roomy = np.array(_ROOMY_FCC, dtype=np.int64)
-        if _is_alike(lattice, energies, roomy):
-            return [roomy]
+    roomy = _ROOMY.get(tuple(name for name, _ in energies))
+    if roomy is not None and _is_alike(lattice, energies, np.array(roomy)):
+        return [np.array(roomy)]
     scales = [np.array([_scale_of(lattice, energies, n)]) for n in _FIT_ATOMS]
     return [np.round(_layers(lattice, energies, s)[0]).astype(np.int64) for s in scales]
 
@@ -234,12 +240,12 @@ def _plain_ladder(
 ) -> Ladder:
     """Evaluate closed forms on a ladder of scales, down to where the surface leaves an inside."""
     largest = 1.3 * _scale_of(lattice, kept, largest_n_atoms)
-    scale = np.geomspace(0.02 * largest, largest, _N_RUNGS)
+    scale = np.geomspace(0.01 * largest, largest, _N_RUNGS)
     atoms, counts, sums = forms.at(_layers(lattice, kept, scale))
     is_sound = (atoms > 13.0) & (np.maximum(counts, 0.0).sum(axis=1) < 0.97 * atoms)
     first = int(np.flatnonzero(~is_sound)[-1]) + 1
     atoms, counts, sums = atoms[first:], np.maximum(counts[first:], 0.0), sums[first:]
-    generalised = np.clip(mean_generalised(counts, sums), 0.0, lattice.bulk_coordination)
+    generalised = mean_generalised(counts, sums, _FEWEST_SITES)
     # a quadratic grows again below its least value, a facet does not
     counts = np.minimum.accumulate(counts[::-1], axis=0)[::-1]
     return Ladder(forms.classes, atoms, counts, generalised)
@@ -332,4 +338,5 @@ def wulff_particle(
     layers = _layers(lattice, kept, scales)
     nearest = int(np.argmin(np.abs(forms.at(layers)[0] - n_atoms)))
     whole = np.maximum(np.round(layers[nearest]), 1.0).astype(np.int64)
-    return cut_particle(lattice, _named(kept, whole))
+    names = [name for name, _ in kept]
+    return cut_particle(lattice, dict(zip(names, whole.tolist(), strict=True)))

@@ -13,8 +13,6 @@ from ase.cluster import (
 from scipy.spatial import cKDTree
 
 from features.errors import PhysicsRangeError, UnknownMaterialError
-from features.particle_lattice import crystal_lattice
-from features.particle_polyhedron import count_atoms, cut_particle
 from features.particle_shapes import available_shapes, explicit_particle, shape_structures
 from features.tables import read_table
 
@@ -159,12 +157,6 @@ def test_sites_of_large_particles_have_the_tabulated_coordination(row):
     # the table has three decimals
     assert values.min() == pytest.approx(row.generalised_coordination_low, abs=5e-4)
     assert values.max() == pytest.approx(row.generalised_coordination_high, abs=5e-4)
-
-
-def test_counting_atoms_agrees_with_building_them():
-    layers = {"(111)": 11, "(100)": 7}
-    lattice = crystal_lattice("fcc")
-    assert count_atoms(lattice, layers) == cut_particle(lattice, layers).n_atoms
 
 
 @pytest.mark.parametrize(
