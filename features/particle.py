@@ -26,6 +26,7 @@ __all__ = [
     "FEWEST_ATOMS",
     "LARGEST_DIAMETER_nm",
     "ParticleCounts",
+    "atoms_at_size",
     "atoms_in_sphere",
     "equivalent_diameter_nm",
     "magic_sizes",
@@ -122,8 +123,29 @@ def atoms_in_sphere(diameter_nm: ArrayLike, atomic_volume_nm3: float) -> FloatAr
     return np.pi * diameter**3 / (6.0 * atomic_volume_nm3)
 
 
-def _checked_atoms(diameter_nm: ArrayLike, metal: MetalLattice) -> tuple[FloatArray, FloatArray]:
-    """Return diameters and atoms as flat arrays, or refuse sizes that are not described."""
+def atoms_at_size(diameter_nm: ArrayLike, metal: MetalLattice) -> tuple[FloatArray, FloatArray]:
+    """Return diameters and atoms as flat arrays, or refuse sizes that are not described.
+
+    Parameters
+    ----------
+    diameter_nm : array-like
+        From the size of 13 atoms to 30 nm.
+    metal : MetalLattice
+
+    Returns
+    -------
+    diameter_nm, n_atoms : ndarray, shape (n_sizes,)
+
+    Raises
+    ------
+    PhysicsRangeError
+        If a size is out of range.
+
+    Examples
+    --------
+    >>> atoms_at_size(2.0, metal_lattice("Pt"))[1].round().tolist()
+    [278.0]
+    """
     diameter = np.atleast_1d(np.asarray(diameter_nm, dtype=np.float64))
     least = float(equivalent_diameter_nm(FEWEST_ATOMS, metal.atomic_volume_nm3))
     # a diameter written with three decimals may fall a hair short of thirteen atoms
@@ -204,7 +226,7 @@ def particle_counts(
     """
     metal = _as_metal(material)
     ladder = _ladder(metal, shape)
-    diameter, atoms = _checked_atoms(diameter_nm, metal)
+    diameter, atoms = atoms_at_size(diameter_nm, metal)
     counts = ladder.counts_at(atoms)
     return ParticleCounts(
         ladder.classes,
@@ -326,7 +348,7 @@ def nearest_particle(
     """
     metal = _as_metal(material)
     ladder = _ladder(metal, shape)
-    atoms = float(_checked_atoms(diameter_nm, metal)[1][0])
+    atoms = float(atoms_at_size(diameter_nm, metal)[1][0])
     if shape == WULFF:
         return wulff_particle(metal.structure, metal.surface_energies_J_m2, atoms, metal.c_over_a)
     shell = int(np.argmin(np.abs(np.cbrt(ladder.n_atoms) - np.cbrt(atoms)))) + 1

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from features.particle_lattice import CrystalLattice, IntArray
 
-__all__ = ["ExplicitParticle", "SiteClass", "cut_particle"]
+__all__ = ["ExplicitParticle", "SiteClass", "cut_particle", "surroundings"]
 
 FloatArray = NDArray[np.float64]
 
@@ -102,6 +102,37 @@ def _half_width(normals: IntArray, offsets: IntArray) -> IntArray:
     planes = np.column_stack([normals, -(offsets + 0.5)]).astype(np.float64)
     corners = HalfspaceIntersection(planes, np.zeros(3)).intersections
     return np.asarray(np.ceil(np.abs(corners).max(axis=0)), dtype=np.int64)
+
+
+def surroundings(
+    lattice: CrystalLattice, layers: Mapping[str, int]
+) -> tuple[IntArray, IntArray, IntArray, IntArray]:
+    """Return all lattice sites in and around a particle, occupied or not.
+
+    Parameters
+    ----------
+    lattice, layers
+        As for `cut_particle`.
+
+    Returns
+    -------
+    sites : ndarray of int, shape (n_sites, 3)
+    table : ndarray of int, shape (n_sites, n_neighbours)
+        Row of each neighbour; ``n_sites`` where it lies outside of the region.
+    normals, planes : ndarray of int
+        Atoms are the sites with ``sites @ normals.T <= planes``.
+
+    Examples
+    --------
+    >>> from features.particle_lattice import crystal_lattice
+    >>> sites, _, normals, planes = surroundings(crystal_lattice("fcc"), {"(111)": 2, "(100)": 1})
+    >>> int((sites @ normals.T <= planes).all(axis=1).sum())
+    13
+    """
+    normals, planes, _ = _planes(lattice, layers)
+    width = _half_width(normals, planes) + np.abs(lattice.neighbours).max(axis=(0, 1)) + 1
+    sites, kind = _candidates(lattice, width, _shift(lattice, layers))
+    return sites, _neighbour_table(lattice, sites, kind), normals, planes
 
 
 def _neighbour_table(lattice: CrystalLattice, sites: IntArray, kind: IntArray) -> IntArray:
