@@ -82,7 +82,7 @@ class AlloySurfaceModel:
     def __init__(self, adsorbates: tuple[str, ...]) -> None:
         self.adsorbates = adsorbates
 
-    def fit(self, rows: pd.DataFrame, pure: PureSurfaceModel) -> Self:
+    def fit(self, rows: pd.DataFrame, pure: PureSurfaceModel, *, compositions: bool = True) -> Self:
         """Fit on rows as from `alloy_rows`.
 
         Parameters
@@ -90,6 +90,8 @@ class AlloySurfaceModel:
         rows : pandas.DataFrame
         pure : PureSurfaceModel
             Fitted on pure metals, none of which is to be left out here.
+        compositions : bool, default True
+            Fit the trees and calibrate new compositions; False serves new elements only.
 
         Returns
         -------
@@ -105,8 +107,9 @@ class AlloySurfaceModel:
         self._z = (self.rows_["energy_eV"].to_numpy() - self._centre(self.rows_)) / self._unit
         self._noise = self.rows_["noise_sd_eV"].to_numpy() / self._unit
         self._fit_gaussians()
-        self.trees_ = self._fit_trees(np.arange(len(self._z)))
-        self._calibrate_compositions()
+        if compositions:
+            self.trees_ = self._fit_trees(np.arange(len(self._z)))
+            self._calibrate_compositions()
         return self
 
     def predict(self, frame: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
@@ -117,13 +120,9 @@ class AlloySurfaceModel:
         mean_eV, sd_eV : ndarray
             Standard deviation of the blend with the noise of a well-sampled row.
         """
-        return self._predict(self.design_.matrix(frame), frame, self.weight_)
-
-    def _predict(
-        self, X: FloatArray, frame: pd.DataFrame, weight: float
-    ) -> tuple[FloatArray, FloatArray]:
+        X = self.design_.matrix(frame)
         gaussian, sd = self._gaussian(X)
-        mean, spread = blend(gaussian, _tree_values(self.trees_, X), sd, weight)
+        mean, spread = blend(gaussian, _tree_values(self.trees_, X), sd, self.weight_)
         unit = self._deviation(frame)
         return self._centre(frame) + unit * mean, unit * spread
 
@@ -258,8 +257,9 @@ class AlloySurfaceModel:
 
     def predict_new_element(self, frame: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
         """Predict surfaces with an element new to the alloys: the Gaussian process alone."""
-        mean, sd = self._predict(self.design_.matrix(frame), frame, 1.0)
-        return mean, np.hypot(sd, self.element_sd_ * self._deviation(frame))
+        mean, sd = self._gaussian(self.design_.matrix(frame))
+        unit = self._deviation(frame)
+        return self._centre(frame) + unit * mean, unit * np.hypot(sd, self.element_sd_)
 
     def _centre(self, frame: pd.DataFrame) -> FloatArray:
         return self.scale_["mean"].reindex(frame["adsorbate"]).to_numpy(dtype=np.float64)

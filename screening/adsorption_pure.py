@@ -128,7 +128,7 @@ class PureSurfaceModel:
         -------
         self
         """
-        self.rows_ = rows.assign(reference=_is_reference(rows)).reset_index(drop=True)
+        self.rows_ = self.mark(rows).reset_index(drop=True)
         close = self.rows_[self.rows_["reference"] & (self.rows_["openness"] == 0.0)]
         grouped = close.groupby("adsorbate")["energy_eV"]
         self.scale_ = pd.DataFrame({"mean": grouped.mean(), "sd": grouped.std(ddof=0)})
@@ -148,6 +148,10 @@ class PureSurfaceModel:
             noise_sd=self.rows_["noise_sd_eV"] / self._deviation(self.rows_),
         )
         return self
+
+    def mark(self, rows: pd.DataFrame) -> pd.DataFrame:
+        """Return the rows with `reference`: whether the adsorbate's reference source gave it."""
+        return rows.assign(reference=_is_reference(rows))
 
     def predict(
         self, metal: list[str], adsorbate: list[str], openness: FloatArray | None = None
