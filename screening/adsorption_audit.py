@@ -1,0 +1,337 @@
+"""Nested evaluation of adsorption energies on metals, elements and compositions never seen.
+
+Whatever learns does so without the group that is judged: covariance parameters, source offsets,
+weights of rows, blend weight and calibration. Metals and elements are left out one at a time with
+parameters learned without a whole fold of them. Energies in eV. Run as
+``python -m screening.adsorption_audit`` to print the summary and the offsets of the sources.
+"""
+
+import sys
+from collections.abc import Iterator
+
+import numpy as np
+import pandas as pd
+from sklearn.ensemble import ExtraTreesRegressor
+from sklearn.model_selection import GroupKFold
+
+from features.adsorption_descriptors import metal_descriptors
+from features.tables import read_table
+from screening.adsorption_alloys import AlloySurfaceModel, robust_gaussian
+from screening.adsorption_design import FAMILIES, SurfaceDesign, alloy_rows, covariance_terms
+from screening.adsorption_pure import PureSurfaceModel, pure_rows
+from screening.calibration import GroupCalibration
+from screening.covariance import FloatArray
+
+__all__ = [
+    "ALLOY_BASELINES",
+    "METAL_BASELINES",
+    "evaluate_adsorption",
+    "evaluate_compositions",
+    "evaluate_elements",
+    "evaluate_metals",
+    "summarise_adsorption",
+]
+
+METAL_BASELINES = ("mean", "linear in the d-band centre", "nearest group neighbour")
+"""Baselines on pure metals, as columns of the evaluation."""
+
+ALLOY_BASELINES = ("mean", "trees on composition averages")
+"""Baselines on alloys, as columns of the evaluation."""
+
+_LEVEL = 0.9
+_FEWEST_ELEMENTS = 12
+_COLUMNS = ["material", "group", "adsorbate", "energy_eV", "model", "sd_eV", "low_90%", "high_90%"]
+
+
+def _folds(labels: pd.Series, n_splits: int) -> Iterator[set[str]]:
+    """Yield sets of labels; every label is in one of them."""
+    names = np.array(sorted(set(labels)))
+    for _, chosen in GroupKFold(min(n_splits, len(names))).split(names, groups=names):
+        yield set(names[chosen].tolist())
+
+
+def _with_interval(
+    rows: pd.DataFrame, mean: FloatArray, sd: FloatArray, calibration: GroupCalibration
+) -> pd.DataFrame:
+    low, high = calibration.interval(mean, sd, _LEVEL)
+    return rows.assign(**{"model": mean, "sd_eV": sd, "low_90%": low, "high_90%": high})
+
+
+def _close_packed(model: PureSurfaceModel, rows: pd.DataFrame) -> pd.DataFrame:
+    """Return rows of the reference sources on close-packed faces."""
+    return rows[model.rows_["reference"] & (model.rows_["openness"] == 0.0)]
+
+
+def evaluate_metals(n_splits: int = 6, rows: pd.DataFrame | None = None) -> pd.DataFrame:
+    """Predict the close-packed face of every metal with the metal left out.
+
+    Parameters
+    ----------
+    n_splits : int, default 6
+        Folds of metals for the covariance parameters and the calibration.
+    rows : pandas.DataFrame or None, default None
+        As from `pure_rows`; None for the packaged tables.
+
+    Returns
+    -------
+    pandas.DataFrame
+        One row a metal and adsorbate of the reference sources: material, group (the metal),
+        adsorbate, energy_eV, model, sd_eV, low_90%, high_90% and `METAL_BASELINES`, all in eV.
+    """
+    rows = pure_rows() if rows is None else rows
+    every = PureSurfaceModel().fit(rows, max_iter=0)
+    judged = _close_packed(every, every.rows_)
+    parts = [_metal_fold(rows, judged, held) for held in _folds(judged["metal"], n_splits)]
+    found = pd.concat(parts).sort_index()
+    found = found.assign(material=found["metal"], group=found["metal"])
+    return found[[*_COLUMNS, *METAL_BASELINES]].reset_index(drop=True)
+
+
+def _metal_fold(rows: pd.DataFrame, judged: pd.DataFrame, held: set[str]) -> pd.DataFrame:
+    tuned = PureSurfaceModel().fit(rows[~rows["metal"].isin(held)])
+    left = _close_packed(tuned, tuned.leave_out(tuned.rows_["metal"].to_numpy()))
+    calibration = GroupCalibration(state="metals left out").fit(
+        left["energy_eV"] - left["predicted_eV"], left["sd_eV"], left["metal"]
+    )
+    parts = []
+    for metal in sorted(held):
+        model = _without(rows, metal, tuned)
+        test = judged[
+            (judged["metal"] == metal) & judged["adsorbate"].isin(model.adsorbates_).to_numpy()
+        ]
+        found = model.predict(test["metal"].tolist(), test["adsorbate"].tolist())
+        baselines = _metal_baselines(judged[judged["metal"] != metal], test, metal)
+        parts.append(_with_interval(test, found.mean, found.sd, calibration).assign(**baselines))
+    return pd.concat(parts)
+
+
+def _without(rows: pd.DataFrame, metal: str, tuned: PureSurfaceModel) -> PureSurfaceModel:
+    """Return the pure-metal model without one metal, with the parameters of another fit."""
+    kept = rows[rows["metal"] != metal].drop(columns="reference", errors="ignore")
+    return PureSurfaceModel().fit(kept, tuned.gaussian_.theta_, max_iter=0)
+
+
+def _metal_baselines(train: pd.DataFrame, test: pd.DataFrame, metal: str) -> dict[str, FloatArray]:
+    """Predict one metal by the mean, a line in the d-band centre and the nearest in the table."""
+    descriptors = metal_descriptors()
+    numbers = read_table("metals").set_index("element")[["group", "atomic_number"]].astype(float)
+    away = (numbers - numbers.loc[metal]).abs()
+    distance = away["group"] + away["atomic_number"] / 1000.0
+    out = np.empty((len(test), len(METAL_BASELINES)))
+    for position, adsorbate in enumerate(test["adsorbate"]):
+        known = train[train["adsorbate"] == adsorbate].set_index("metal")["energy_eV"]
+        line = np.column_stack([np.ones(len(descriptors)), descriptors["d_band_centre_eV"]])
+        line = np.column_stack([line, descriptors["sp_character"]])
+        design = pd.DataFrame(line, index=descriptors.index)
+        slopes, *_ = np.linalg.lstsq(design.loc[known.index].to_numpy(), known.to_numpy())
+        nearest = known[distance[known.index].idxmin()]
+        out[position] = known.mean(), design.loc[metal].to_numpy() @ slopes, nearest
+    return dict(zip(METAL_BASELINES, out.T, strict=True))
+
+
+def _members(rows: pd.DataFrame, names: set[str]) -> FloatArray:
+    return (rows["first"].isin(names) | rows["second"].isin(names)).to_numpy()
+
+
+def _composition_averages(rows: pd.DataFrame) -> FloatArray:
+    descriptors = metal_descriptors()
+    share = rows["share"].to_numpy(dtype=np.float64)[:, None]
+    first, second = (descriptors.loc[rows[c]].to_numpy() for c in ("first", "second"))
+    return np.asarray(share * first + (1.0 - share) * second, dtype=np.float64)
+
+
+def _alloy_baselines(train: pd.DataFrame, test: pd.DataFrame, seed: int) -> pd.DataFrame:
+    """Predict by the mean of the adsorbate and by plain trees on composition averages."""
+    found = pd.DataFrame(np.nan, index=test.index, columns=list(ALLOY_BASELINES))
+    for adsorbate, part in test.groupby("adsorbate"):
+        known = train[train["adsorbate"] == adsorbate]
+        trees = ExtraTreesRegressor(120, random_state=seed)
+        trees.fit(_composition_averages(known), known["energy_eV"])
+        values = [np.full(len(part), known["energy_eV"].mean())]
+        values.append(trees.predict(_composition_averages(part)))
+        found.loc[part.index] = np.column_stack(values)
+    return test.join(found)
+
+
+def evaluate_compositions(
+    n_splits: int = 5, seed: int = 0, alloys: pd.DataFrame | None = None
+) -> pd.DataFrame:
+    """Predict every alloy row with its composition left out for all adsorbates.
+
+    Parameters
+    ----------
+    n_splits : int, default 5
+    seed : int, default 0
+        Of the baseline trees.
+    alloys : pandas.DataFrame or None, default None
+        As from `alloy_rows`; None for the packaged tables.
+
+    Returns
+    -------
+    pandas.DataFrame
+        Columns as from `evaluate_metals`, with the composition as group, fold, gaussian_weight
+        and `ALLOY_BASELINES`.
+    """
+    alloys = alloy_rows() if alloys is None else alloys
+    pure = PureSurfaceModel().fit(pure_rows())
+    parts = []
+    for fold, held in enumerate(_folds(alloys["composition"], n_splits)):
+        out = alloys["composition"].isin(held)
+        for members in FAMILIES.values():
+            own = alloys["adsorbate"].isin(members)
+            if (own & out).any():
+                found = _composition_fold(alloys[own & ~out], alloys[own & out], pure, members)
+                parts.append(_alloy_baselines(alloys[own & ~out], found.assign(fold=fold), seed))
+    found = pd.concat(parts).sort_index()
+    found = found.assign(material=found["composition"], group=found["composition"])
+    return found[[*_COLUMNS, "fold", "gaussian_weight", *ALLOY_BASELINES]].reset_index(drop=True)
+
+
+def _composition_fold(
+    train: pd.DataFrame, test: pd.DataFrame, pure: PureSurfaceModel, members: tuple[str, ...]
+) -> pd.DataFrame:
+    model = AlloySurfaceModel(members).fit(train, pure)
+    mean, sd = model.predict(test)
+    found = _with_interval(test, mean, sd, model.calibration_)
+    return found.assign(gaussian_weight=model.weight_)
+
+
+def evaluate_elements(
+    n_splits: int = 5, seed: int = 0, alloys: pd.DataFrame | None = None
+) -> pd.DataFrame:
+    """Predict every alloy row once for either element, all data of that element left out.
+
+    The element's pure surfaces are left out as well. Families of adsorbates with too few elements
+    for a 90 % interval are not judged: the model answers them by its mixing rule.
+
+    Parameters
+    ----------
+    n_splits : int, default 5
+        Folds of elements for the covariance parameters and the calibration.
+    seed : int, default 0
+        Of the baseline trees.
+    alloys : pandas.DataFrame or None, default None
+        As from `alloy_rows`; None for the packaged tables.
+
+    Returns
+    -------
+    pandas.DataFrame
+        Columns as from `evaluate_metals`, with the element as group, and `ALLOY_BASELINES`.
+    """
+    alloys = alloy_rows() if alloys is None else alloys
+    pure = pure_rows()
+    parts = []
+    for members in FAMILIES.values():
+        rows = alloys[alloys["adsorbate"].isin(members)]
+        elements = pd.concat([rows["first"], rows["second"]])
+        if elements.nunique() >= _FEWEST_ELEMENTS:
+            parts += [
+                _element_fold(rows, pure, members, held, seed)
+                for held in _folds(elements, n_splits)
+            ]
+    found = pd.concat(parts).sort_values(["group", "adsorbate", "composition"])
+    found = found.assign(material=found["composition"])
+    return found[[*_COLUMNS, *ALLOY_BASELINES]].reset_index(drop=True)
+
+
+def _element_fold(
+    rows: pd.DataFrame,
+    pure: pd.DataFrame,
+    members: tuple[str, ...],
+    held: set[str],
+    seed: int,
+) -> pd.DataFrame:
+    kept = pure[~pure["metal"].isin(held)]
+    tuned = PureSurfaceModel().fit(kept)
+    train = rows[~_members(rows, held)]
+    known = sorted(set(train["first"]) | set(train["second"]))
+    model = AlloySurfaceModel(members).fit(train, tuned)
+    model.calibrate_elements({e: _without(kept, e, tuned) for e in known})
+    parts = []
+    for element in sorted(held):
+        out = _members(rows, {element})
+        mean, sd = _new_element(rows[~out], rows[out], _without(pure, element, tuned), model)
+        found = _with_interval(rows[out], mean, sd, model.element_calibration_)
+        parts.append(_alloy_baselines(rows[~out], found.assign(group=element), seed))
+    return pd.concat(parts)
+
+
+def _new_element(
+    train: pd.DataFrame, test: pd.DataFrame, pure: PureSurfaceModel, tuned: AlloySurfaceModel
+) -> tuple[FloatArray, FloatArray]:
+    """Predict from the rows of other elements with the covariance parameters of `tuned`."""
+    grouped = train.groupby("adsorbate")["energy_eV"]
+    scale = pd.DataFrame({"mean": grouped.mean(), "sd": grouped.std(ddof=0)})
+    design = SurfaceDesign(pure, scale, tuned.adsorbates)
+    known = scale.loc[train["adsorbate"]].to_numpy()
+    wanted = scale.loc[test["adsorbate"]].to_numpy()
+    z = (train["energy_eV"].to_numpy() - known[:, 0]) / known[:, 1]
+    noise = train["noise_sd_eV"].to_numpy() / known[:, 1]
+    terms = covariance_terms(len(tuned.adsorbates))
+    theta = tuned.gaussian_.theta_
+    model, _ = robust_gaussian(terms, design.matrix(train), z, noise, start=theta, max_iter=0)
+    mean, sd = model.predict(design.matrix(test), return_std=True)
+    return wanted[:, 0] + wanted[:, 1] * mean, wanted[:, 1] * np.hypot(sd, model.noise_)
+
+
+def evaluate_adsorption(seed: int = 0) -> dict[str, pd.DataFrame]:
+    """Return the three nested evaluations on the packaged tables.
+
+    Parameters
+    ----------
+    seed : int, default 0
+        Of the baseline trees.
+
+    Returns
+    -------
+    dict of str to pandas.DataFrame
+        Keys ``metals``, ``compositions`` and ``elements``: what is left out.
+    """
+    return {
+        "metals": evaluate_metals(),
+        "compositions": evaluate_compositions(seed=seed),
+        "elements": evaluate_elements(seed=seed),
+    }
+
+
+def summarise_adsorption(evaluation: dict[str, pd.DataFrame]) -> pd.DataFrame:
+    """Return errors and coverage by split and adsorbate.
+
+    Parameters
+    ----------
+    evaluation : dict of str to pandas.DataFrame
+        As from `evaluate_adsorption`.
+
+    Returns
+    -------
+    pandas.DataFrame
+        Columns left_out, adsorbate (``all`` for the rows together), n_rows, n_groups, mean
+        absolute error (eV) of the model and of each baseline that the split has, coverage of the
+        90 % interval by rows and with one vote a group, mean width of the interval (eV).
+    """
+    parts = []
+    for split, frame in evaluation.items():
+        pieces = [*frame.groupby("adsorbate"), ("all", frame)]
+        parts += [{"left_out": split, "adsorbate": a, **_figures(part)} for a, part in pieces]
+    return pd.DataFrame(parts)
+
+
+def _figures(frame: pd.DataFrame) -> dict[str, float]:
+    truth = frame["energy_eV"]
+    methods = ["model", *dict.fromkeys((*METAL_BASELINES, *ALLOY_BASELINES))]
+    errors = {f"error of {m}": (frame[m] - truth).abs().mean() for m in methods if m in frame}
+    inside = ((truth >= frame["low_90%"]) & (truth <= frame["high_90%"])).astype(float)
+    return {
+        "n_rows": len(frame),
+        "n_groups": frame["group"].nunique(),
+        **errors,
+        "coverage by rows": inside.mean(),
+        "coverage by groups": inside.groupby(frame["group"]).mean().mean(),
+        "mean width": (frame["high_90%"] - frame["low_90%"]).mean(),
+    }
+
+
+if __name__ == "__main__":
+    for _, _summary in summarise_adsorption(evaluate_adsorption()).groupby("left_out", sort=False):
+        sys.stdout.write(_summary.dropna(axis=1).round(3).to_string(index=False) + "\n\n")
+    sys.stdout.write(PureSurfaceModel().fit(pure_rows()).source_offsets().to_string() + "\n")
