@@ -12,16 +12,17 @@ from typing import Any, Self
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from features.adsorption_descriptors import (
     alloy_parts,
     standardised_descriptors,
 )
-from features.errors import SpecificationError, TableError, explain
-from features.tables import read_table
+from features.errors import TableError, explain
 from screening.adsorption_alloys import AlloySurfaceModel
 from screening.adsorption_design import FAMILIES, alloy_rows, family_of
-from screening.adsorption_pure import PureSurfaceModel, facet_openness, pure_rows
+from screening.adsorption_pure import PureSurfaceModel, pure_rows
+from screening.adsorption_questions import close_packed_structure, read_surfaces
 from screening.adsorption_rules import HollowRule
 from screening.adsorption_sites import SiteShifts
 from screening.calibration import GroupCalibration
@@ -43,10 +44,7 @@ RECORD_STATES = (
 )
 """What stands behind a prediction."""
 
-_STRUCTURES = ("fcc", "hcp", "bcc", "L10", "L12")
-_FACETS = ("111", "0001", "110", "100", "211", "101")
 _NORMAL_90 = 1.6448536269514722
-_ORDERED_FACETS = frozenset({"101", "111", "0001"})
 
 
 def pure_models_without(
@@ -133,7 +131,7 @@ class AdsorptionModel:
         FormulaError, UnknownMaterialError
             If a material cannot be read or has an element without data.
         """
-        rows = self._read(frame)
+        rows = read_surfaces(frame, self.pure_.adsorbates_)
         result = pd.concat([self._pure(rows), self._alloys(rows)]).reindex(rows.index)
         result.index = frame.index
         return result
@@ -171,7 +169,7 @@ class AdsorptionModel:
         ).iloc[0]
         first, second, share = alloy_parts(material)
         parts = {first: 1.0} if first == second else {first: share, second: 1.0 - share}
-        shift, sd = self.sites_.shift(parts, adsorbate, coordination, _structure(first))
+        shift, sd = self.sites_.shift(parts, adsorbate, coordination, close_packed_structure(first))
         return _site_frame(terrace, shift, sd, sites.index)
 
     def source_offsets(self) -> pd.DataFrame:
@@ -195,38 +193,12 @@ class AdsorptionModel:
             for state, (groups, kept) in states.items()
         }
 
-    def _calibration(self, state: str, groups: pd.Series, kept: FloatArray) -> GroupCalibration:
+    def _calibration(
+        self, state: str, groups: pd.Series, kept: NDArray[np.bool_]
+    ) -> GroupCalibration:
         left = self.pure_.leave_out(groups.to_numpy())[kept]
         residual = left["energy_eV"] - left["predicted_eV"]
         return GroupCalibration(state=state).fit(residual, left["sd_eV"], left["metal"])
-
-    def _read(self, frame: pd.DataFrame) -> pd.DataFrame:
-        """Check the table and split materials into metals and shares."""
-        missing = [c for c in ("material", "adsorbate") if c not in frame]
-        if missing:
-            raise TableError(
-                explain(f"no column {missing[0]!r}", found=", ".join(map(str, frame.columns)))
-            )
-        known = set(self.pure_.adsorbates_)
-        for position, adsorbate in enumerate(frame["adsorbate"]):
-            if adsorbate not in known:
-                raise SpecificationError(
-                    explain(
-                        "unknown adsorbate",
-                        where=f"row {position + 1}",
-                        expected=f"one of {', '.join(sorted(known))}",
-                        found=repr(adsorbate),
-                    )
-                )
-        parts = [alloy_parts(str(material)) for material in frame["material"]]
-        rows = pd.DataFrame(parts, columns=["first", "second", "share"])
-        structure = _choices(frame, "structure", _STRUCTURES)
-        facet = _choices(frame, "facet", _FACETS)
-        openness = [
-            _openness(first, s, f)
-            for first, s, f in zip(rows["first"], structure, facet, strict=True)
-        ]
-        return rows.assign(adsorbate=frame["adsorbate"].to_numpy(), openness=openness, hollow=False)
 
     def _pure(self, rows: pd.DataFrame) -> pd.DataFrame:
         pure = rows[rows["first"] == rows["second"]]
@@ -339,43 +311,6 @@ def _shifted(alloys: pd.DataFrame, pure: PureSurfaceModel) -> pd.DataFrame:
     keys = pd.MultiIndex.from_frame(alloys[["source", "adsorbate"]])
     shift = offsets.reindex(keys).fillna(0.0).to_numpy()
     return alloys.assign(energy_eV=alloys["energy_eV"] - shift)
-
-
-@lru_cache(maxsize=1)
-def _structures() -> dict[str, str]:
-    table = read_table("metals")
-    return dict(zip(table["element"].astype(str), table["structure"].astype(str), strict=True))
-
-
-def _structure(metal: str) -> str:
-    """Return the structure whose close-packed face stands for the metal."""
-    found = _structures()[metal]
-    return found if found in {"hcp", "bcc"} else "fcc"
-
-
-def _choices(frame: pd.DataFrame, column: str, known: tuple[str, ...]) -> list[str]:
-    """Return an optional column as text, empty where nothing is given."""
-    if column not in frame:
-        return [""] * len(frame)
-    texts = ["" if pd.isna(v) else str(v).strip().removesuffix(".0") for v in frame[column]]
-    texts = ["0001" if t == "1" and column == "facet" else t for t in texts]
-    for position, text in enumerate(texts):
-        if text and text not in known:
-            raise TableError(
-                explain(
-                    f"unknown {column}",
-                    where=f"row {position + 1}",
-                    expected=f"one of {', '.join(known)}, or empty",
-                    found=repr(text),
-                )
-            )
-    return texts
-
-
-def _openness(first: str, structure: str, facet: str) -> float:
-    if not facet or facet in _ORDERED_FACETS:
-        return 0.0
-    return facet_openness(structure or _structure(first), facet)
 
 
 def _result(

@@ -13,6 +13,7 @@ from typing import Any, Self
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 from scipy.linalg import cho_factor, cho_solve
 from sklearn.ensemble import HistGradientBoostingRegressor
 from sklearn.model_selection import GroupKFold
@@ -59,13 +60,15 @@ def robust_gaussian(
     noise : ndarray of shape (n_rows,)
         The enlarged noise of the rows.
     """
-    first = GroupedGaussianProcess(terms=terms, noise=0.15, start=start, max_iter=max_iter)
+    first = GroupedGaussianProcess(
+        terms=terms, noise=0.15, start=None if start is None else start.tolist(), max_iter=max_iter
+    )
     first.fit(X, z, noise_sd=noise)
     mean, sd = first.leave_group_out(np.arange(len(z)))
     expected = np.sqrt(sd**2 + first.noise_**2 + noise**2)
     excess = np.maximum((z - mean) ** 2 - (_OUTLIER * expected) ** 2, 0.0)
     again = GroupedGaussianProcess(
-        terms=terms, noise=0.15, start=first.theta_, max_iter=max_iter // 3
+        terms=terms, noise=0.15, start=first.theta_.tolist(), max_iter=max_iter // 3
     )
     enlarged = np.sqrt(noise**2 + excess)
     return again.fit(X, z, noise_sd=enlarged), enlarged
@@ -147,7 +150,7 @@ class AlloySurfaceModel:
         terms = covariance_terms(len(self.adsorbates))
         return robust_gaussian(terms, self._X, self._z, self._noise, start=start, max_iter=max_iter)
 
-    def _fit_trees(self, rows: FloatArray) -> HistGradientBoostingRegressor:
+    def _fit_trees(self, rows: NDArray[np.intp]) -> HistGradientBoostingRegressor:
         weight = 1.0 / (self._noise[rows] ** 2 + 0.09)
         with threadpool_limits(1, user_api="openmp"):
             return boosted_trees(**_TREE_OPTIONS).fit(
@@ -221,13 +224,13 @@ class AlloySurfaceModel:
         covariance[np.diag_indices_from(covariance)] += self._enlarged**2 + self.gaussian_.noise_**2
         parts = []
         for element, pure in pure_without.items():
-            held = (self.rows_[["first", "second"]] == element).any(axis=1).to_numpy()
+            held = (self.rows_[["first", "second"]] == element).any(axis=1).to_numpy(dtype=np.bool_)
             if held.any():
                 parts.append(self._without(covariance, held, pure).assign(left_out=element))
         return pd.concat(parts, ignore_index=True)
 
     def _without(
-        self, covariance: FloatArray, held: FloatArray, pure: PureSurfaceModel
+        self, covariance: FloatArray, held: NDArray[np.bool_], pure: PureSurfaceModel
     ) -> pd.DataFrame:
         frame = self.rows_[held]
         X = SurfaceDesign(pure, self.scale_, self.adsorbates).matrix(frame)

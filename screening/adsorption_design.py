@@ -11,6 +11,7 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from features.adsorption_descriptors import (
     METAL_DESCRIPTORS,
@@ -66,7 +67,8 @@ def hollow_share(share: Any) -> FloatArray:
     >>> hollow_share([0.25, 0.5, 0.75]).round(2).tolist()
     [0.33, 0.67, 1.0]
     """
-    return np.interp(share, [0.0, 0.25, 0.5, 0.75], [0.0, 1 / 3, 2 / 3, 1.0])
+    shares = np.asarray(share, dtype=np.float64)
+    return np.asarray(np.interp(shares, [0.0, 0.25, 0.5, 0.75], [0.0, 1 / 3, 2 / 3, 1.0]))
 
 
 def alloy_rows(without: Collection[str] = ()) -> pd.DataFrame:
@@ -106,11 +108,11 @@ def _ordered_rows() -> pd.DataFrame:
     )
 
 
-def _missed_hollow(table: pd.DataFrame) -> FloatArray:
+def _missed_hollow(table: pd.DataFrame) -> NDArray[np.bool_]:
     """Tell minima whose usual kind of site was not among the sites computed."""
     kind = table["adsorbate"].isin(_HOLLOW_SPECIES) & (table["site"] == "top")
     methyl = (table["adsorbate"] == "CH3") & table["site"].isin(["fcc", "hcp"])
-    return (kind | (methyl & (table["n_sites_seen"] <= 2))).to_numpy()
+    return (kind | (methyl & (table["n_sites_seen"] <= 2))).to_numpy(dtype=np.bool_)
 
 
 def _ensemble_rows() -> pd.DataFrame:
@@ -188,7 +190,7 @@ class SurfaceDesign:
 
     def _metal(self, metals: Any, frame: pd.DataFrame) -> FloatArray:
         descriptors = standardised_descriptors().loc[list(metals)].to_numpy()
-        at = self.scaled.columns.get_indexer(frame["adsorbate"])
+        at = self.scaled.columns.get_indexer(pd.Index(frame["adsorbate"]))
         energies = self.scaled.loc[list(metals)].to_numpy()[np.arange(len(frame)), at]
         return np.column_stack([descriptors, energies])
 

@@ -140,7 +140,7 @@ class PureSurfaceModel:
             terms=_terms(),
             noise=_RELATIVE_NOISE,
             noise_spread=0.5,
-            start=start,
+            start=None if start is None else start.tolist(),
             max_iter=max_iter,
         ).fit(
             self._matrix(self.rows_),
@@ -248,7 +248,7 @@ def _terms() -> tuple[CovarianceTerm, ...]:
     n = len(PURE_DESCRIPTORS)
     columns = tuple(range(n))
     adsorbate, openness, source, other = n, n + 1, n + 2, n + 3
-    smooth = {"columns": columns, "length_scale": 3.0, "length_spread": 0.5}
+    smooth: dict[str, Any] = {"columns": columns, "length_scale": 3.0, "length_spread": 0.5}
     return (
         CovarianceTerm("all adsorbates", **smooth, smoothness="matern 5/2"),
         CovarianceTerm(

@@ -93,8 +93,8 @@ class SiteShifts:
         """
         prior, spread = self._pooled
         if adsorbate in self.by_adsorbate_.index:
-            row = self.by_adsorbate_.loc[adsorbate]
-            prior, spread = float(row["mean"]), float(row["sd"])
+            prior = float(self.by_adsorbate_["mean"].loc[adsorbate])
+            spread = float(self.by_adsorbate_["sd"].loc[adsorbate])
         own = self.slopes_[
             (self.slopes_["metal"] == metal) & (self.slopes_["adsorbate"] == adsorbate)
         ]
