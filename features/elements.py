@@ -261,7 +261,7 @@ def shannon_radius_nm(symbol: str, state: int) -> float:
     from pymatgen.core.periodic_table import Element  # noqa: PLC0415 - costly, only when asked
 
     by_state = Element(symbol).data.get("Shannon radii") or {}
-    same_sign = [s for s in by_state if int(s) * state > 0]
+    same_sign = [s for s in by_state if s and int(s) * state > 0]
     if not same_sign:
         return float(_filled_table()["ionic_radius_nm"][symbol])
     shells = by_state[min(same_sign, key=lambda s: abs(int(s) - state))]

@@ -1,9 +1,8 @@
-"""Gaussian process and randomised trees that learn the square root of the bulk gap.
+"""Gaussian processes and randomised trees that learn the square root of the bulk gap.
 
 The square root makes errors of narrow and wide gaps comparable; its median maps back to the
-median of the gap. Rows that contradict their neighbours lose weight as under a Student-t
-likelihood: one step of expectation-maximisation on left-out residuals (Lange, Little and Taylor,
-J. Am. Stat. Assoc. 84, 881 (1989)), because compilations hold misprints and defect absorption.
+median of the gap. The trees see the processes' left-out prediction as one more column, so that
+they learn where it errs.
 """
 
 from collections.abc import Sequence
@@ -16,19 +15,17 @@ from sklearn.model_selection import GroupKFold
 
 from screening.blending import blend, blend_weight
 from screening.bulk_gap_design import GapDesign, tree_matrix
+from screening.bulk_gap_process import ProcessAverage
 from screening.calibration import GroupCalibration, group_weights
 from screening.covariance import FloatArray
-from screening.gaussian import GroupedGaussianProcess
 
 __all__ = ["GapRegressor", "squared_moments"]
 
 _DOUBTFUL_NOISE = 0.5
 _DOUBTFUL_VOTE = 0.2
-_DEGREES_OF_FREEDOM = 4.0
-_SAMPLE_ROWS = 600
-_MAX_ITER = 18
 _N_TREES = 80
-_N_FOLDS = 5
+_N_FOLDS = 10
+_N_TREES_LEFT_OUT = 40
 
 
 def squared_moments(root: FloatArray, root_sd: FloatArray) -> tuple[FloatArray, FloatArray]:
@@ -54,13 +51,8 @@ def squared_moments(root: FloatArray, root_sd: FloatArray) -> tuple[FloatArray, 
     return middle**2, np.sqrt(variance)
 
 
-def _at(
-    learned: GroupedGaussianProcess, X: FloatArray, y: FloatArray, noise_sd: FloatArray
-) -> GroupedGaussianProcess:
-    """Return a process on all rows with the parameters that another one learned."""
-    kept = GroupedGaussianProcess(learned.terms_, max_iter=0, start=learned.theta_.tolist())
-    fitted: GroupedGaussianProcess = kept.fit(X, y, noise_sd=noise_sd)
-    return fitted
+def _with_column(matrix: FloatArray, column: FloatArray) -> FloatArray:
+    return np.hstack([matrix, column[:, None]])
 
 
 class GapRegressor:
@@ -73,7 +65,7 @@ class GapRegressor:
     Attributes
     ----------
     gaussian_weight_ : float
-        Weight of the Gaussian process, by skill on left-out chemical systems.
+        Weight of the Gaussian processes, by skill on left-out chemical systems.
     calibration_ : GroupCalibration
         From left-out chemical systems.
     """
@@ -99,59 +91,54 @@ class GapRegressor:
         root = np.sqrt(np.maximum(rows["gap_eV"].to_numpy(dtype=np.float64), 0.0))
         self.level_ = float(root.mean())
         self.design_ = GapDesign().fit(formulas)
-        self._fit_gaussian(self.design_.transform(formulas), root - self.level_, groups, doubtful)
+        self.gaussian_ = ProcessAverage(self.design_.terms(), seed=self.seed).fit(
+            self.design_.transform(formulas),
+            root - self.level_,
+            groups,
+            np.where(doubtful, _DOUBTFUL_NOISE, 0.0),
+        )
         votes = np.where(doubtful, _DOUBTFUL_VOTE, 1.0)
-        self._fit_trees(tree_matrix(formulas), root - self.level_, groups, votes)
-        self._calibrate(root - self.level_, groups, votes)
+        X = _with_column(tree_matrix(formulas), self.gaussian_.left_mean_)
+        self.trees_ = self._new_trees().fit(X, root - self.level_, votes)
+        self._calibrate(X, root - self.level_, groups, votes)
         return self
 
     def predict_root(self, formulas: Sequence[str]) -> tuple[FloatArray, FloatArray]:
-        """Return mean and uncalibrated standard deviation of the square root of the gap."""
-        mean, sd = self.gaussian_.predict(self.design_.transform(formulas), return_std=True)
-        trees = self.trees_.predict(tree_matrix(formulas))
+        """Return mean and uncalibrated standard deviation of the square root of the gap.
+
+        Parameters
+        ----------
+        formulas : sequence of str
+
+        Returns
+        -------
+        mean, sd : ndarray of shape (n_formulas,)
+            In the square root of eV.
+        """
+        mean, sd = self.gaussian_.predict(self.design_.transform(formulas))
+        trees = self.trees_.predict(_with_column(tree_matrix(formulas), mean))
         mixed, spread = blend(mean, trees, sd, self.gaussian_weight_)
         return mixed + self.level_, np.hypot(spread, self.gaussian_.noise_)
 
-    def _fit_gaussian(
-        self, X: FloatArray, y: FloatArray, groups: Any, doubtful: FloatArray
-    ) -> None:
-        """Fit parameters on a sample of rows, then factorise all rows, outliers weighed down.
+    def _new_trees(self, n_trees: int = _N_TREES) -> ExtraTreesRegressor:
+        return ExtraTreesRegressor(n_trees, max_features=0.4, random_state=self.seed)
 
-        Blend and calibration use the left-out predictions before the outliers lose weight: the
-        weights know all rows, so later ones would look better than a new system's.
-        """
-        own = np.where(doubtful, _DOUBTFUL_NOISE, 0.0)
-        terms = self.design_.terms()
-        sample = np.random.default_rng(self.seed).permutation(len(y))[:_SAMPLE_ROWS]
-        learned = GroupedGaussianProcess(terms, max_iter=_MAX_ITER).fit(
-            X[sample], y[sample], noise_sd=own[sample]
-        )
-        first = _at(learned, X, y, own)
-        mean, sd = first.leave_group_out(groups)
-        self._left_mean, self._left_sd = mean, sd
-        standard = (y - mean) ** 2 / (sd**2 + first.noise_**2 + own**2)
-        excess = (_DEGREES_OF_FREEDOM + standard) / (_DEGREES_OF_FREEDOM + 1.0) - 1.0
-        robust = own**2 + np.maximum(excess, 0.0) * (first.noise_**2 + 0.5 * sd**2)
-        self.gaussian_ = _at(learned, X, y, np.sqrt(robust))
-
-    def _fit_trees(self, X: FloatArray, y: FloatArray, groups: Any, votes: FloatArray) -> None:
-        """Fit the trees, and predict every chemical system from the others."""
+    def _left_out_trees(
+        self, X: FloatArray, y: FloatArray, groups: Any, votes: FloatArray
+    ) -> FloatArray:
+        """Predict every chemical system by trees that were grown on the others."""
         left = np.empty(len(y))
         for train, test in GroupKFold(_N_FOLDS).split(X, y, groups):
-            left[test] = self._new_trees().fit(X[train], y[train], votes[train]).predict(X[test])
-        self.trees_ = self._new_trees().fit(X, y, votes)
-        self._left_trees = left
+            trees = self._new_trees(_N_TREES_LEFT_OUT).fit(X[train], y[train], votes[train])
+            left[test] = trees.predict(X[test])
+        return left
 
-    def _new_trees(self) -> ExtraTreesRegressor:
-        return ExtraTreesRegressor(_N_TREES, max_features=0.4, random_state=self.seed)
-
-    def _calibrate(self, y: FloatArray, groups: Any, votes: FloatArray) -> None:
-        weights = group_weights(groups, votes)
-        self.gaussian_weight_ = blend_weight(y, self._left_mean, self._left_trees, weights)
-        mean, spread = blend(
-            self._left_mean, self._left_trees, self._left_sd, self.gaussian_weight_
-        )
-        sd = np.hypot(spread, self.gaussian_.noise_)
+    def _calibrate(self, X: FloatArray, y: FloatArray, groups: Any, votes: FloatArray) -> None:
+        """Weigh both learners and calibrate by their left-out predictions."""
+        mean, sd = self.gaussian_.left_mean_, self.gaussian_.left_sd_
+        trees = self._left_out_trees(X, y, groups, votes)
+        self.gaussian_weight_ = blend_weight(y, mean, trees, group_weights(groups, votes))
+        mixed, spread = blend(mean, trees, sd, self.gaussian_weight_)
         self.calibration_ = GroupCalibration(state="new composition").fit(
-            y - mean, sd, groups, votes
+            y - mixed, np.hypot(spread, self.gaussian_.noise_), groups, votes
         )
