@@ -59,7 +59,7 @@ def answer_table(path: Path, size_spread: float) -> pd.DataFrame:
 
         return _dots(read_pairs(path), size_spread)
     if "adsorbate" in header:
-        from screening.adsorption import answer_surfaces  # noqa: PLC0415 - as above
+        from screening.surface_answers import answer_surfaces  # noqa: PLC0415 - as above
 
         return answer_surfaces(path)
     if "material" in header:
@@ -77,10 +77,13 @@ def answer_table(path: Path, size_spread: float) -> pd.DataFrame:
 
 
 def _dots(pairs: pd.DataFrame, size_spread: float) -> pd.DataFrame:
-    from screening.predicting import predict_pairs  # noqa: PLC0415 - loads the model's libraries
+    from screening.candidates import pair_frame  # noqa: PLC0415 - loads slowly
+    from screening.predicting import predict_pairs  # noqa: PLC0415 - as above
     from screening.trained import trained_dots  # noqa: PLC0415 - as above
 
-    return predict_pairs(pairs, trained_dots(), size_spread)
+    # A material that nothing is known about is said before a model is trained for it.
+    frame = pair_frame(pairs)
+    return predict_pairs(frame, trained_dots(), size_spread)
 
 
 def _bulk_gaps(materials: pd.DataFrame) -> pd.DataFrame:

@@ -138,7 +138,7 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         X: Any,
         y: Any,
         noise_sd: Any = None,
-        sample_weight: Any = None,
+        tree_weight: Any = None,
         start: Sequence[float] | None = None,
         max_iter: int = 200,
     ) -> Self:
@@ -148,7 +148,7 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         ----------
         X : array-like of shape (n_rows, n_columns)
         y : array-like of shape (n_rows,)
-        noise_sd, sample_weight : array-like of shape (n_rows,) or None, default None
+        noise_sd, tree_weight : array-like of shape (n_rows,) or None, default None
             Rows' own noise for the Gaussian process; weights for the trees.
         start, max_iter
             Passed on to `GroupedGaussianProcess`.
@@ -164,7 +164,7 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         columns = range(X.shape[1]) if self.tree_columns is None else self.tree_columns
         self._columns = list(columns)
         self._X, self._y = X, np.asarray(y, dtype=np.float64)
-        self._weight = None if sample_weight is None else np.asarray(sample_weight, dtype=float)
+        self._weight = None if tree_weight is None else np.asarray(tree_weight, dtype=float)
         self.trees_ = self._fit_trees(np.arange(len(self._y)))
         return self
 

@@ -122,6 +122,18 @@ class BulkGapModel:
         rows = [[name, *(answer or ())] for name, answer in zip(names, answers, strict=True)]
         return pd.DataFrame(rows, columns=list(COLUMNS))
 
+    def check(self, material: str) -> None:
+        """Raise what `predict` would raise for a material, without predicting.
+
+        Raises
+        ------
+        FormulaError
+            As `predict`.
+        """
+        compound = _checked(material)
+        if self._known(compound) is None:
+            _require_balance(compound)
+
     def predict_new(
         self, formulas: Sequence[str], level: float = _LEVEL
     ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:

@@ -10,7 +10,7 @@ from features.formula import parse_formula
 from features.semiconductors import bulk_constants, known_materials, match_material
 from screening.specification import Candidates
 
-__all__ = ["candidate_grid", "choose_materials", "pair_frame"]
+__all__ = ["candidate_grid", "choose_materials", "constants_of", "pair_frame"]
 
 _USUAL_SHAPE = {"halide perovskite": "cube"}
 """Shape in which a family is usually made; sphere otherwise (common practice)."""
@@ -98,6 +98,22 @@ def _refusal(name: str, family: str, wanted: Candidates, recorded: set[str]) -> 
     return ""
 
 
+def constants_of(materials: list[str]) -> pd.DataFrame:
+    """Return bulk constants, estimated for compounds that are not on record.
+
+    Raises
+    ------
+    FormulaError
+        If a text is not a formula or not a compound that can have a gap.
+    """
+    try:
+        return bulk_constants(materials)
+    except UnknownMaterialError:
+        from screening.bulk_answers import any_constants  # noqa: PLC0415 - trains more models
+
+        return any_constants(materials)
+
+
 def pair_frame(pairs: pd.DataFrame) -> pd.DataFrame:
     """Join material-diameter pairs with bulk constants.
 
@@ -111,7 +127,7 @@ def pair_frame(pairs: pd.DataFrame) -> pd.DataFrame:
     pandas.DataFrame
         One row a pair, in the order and with the index given.
     """
-    bulk = bulk_constants(pairs["material"].tolist()).set_index(pairs.index)
+    bulk = constants_of(pairs["material"].tolist()).set_index(pairs.index)
     frame = bulk.drop(columns=["source"])
     frame["diameter_nm"] = pairs["diameter_nm"].astype(float)
     usual = frame["family"].map(_USUAL_SHAPE).fillna("sphere")

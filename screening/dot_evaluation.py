@@ -56,8 +56,7 @@ def _leave_material(rows: pd.DataFrame, material: str, seed: int) -> list[pd.Dat
     ranges = range_groups(rows)
     for label in sorted(set(ranges[own]) - {""}):
         test = ranges.eq(label)
-        theta = others.regressor_.gaussian_.theta_.tolist()
-        model = SizeGapModel(seed).fit(rows[~test], theta=theta)
+        model = SizeGapModel(seed).fit(rows[~test])
         model.states_ = others.states_
         frames.append(_predicted(model, rows[test], ON_RECORD))
     return frames
@@ -79,7 +78,9 @@ def _predicted(model: SizeGapModel, test: pd.DataFrame, state: str) -> pd.DataFr
     frame["predicted_gap_eV"] = predicted["optical_gap_eV"]
     for level in LEVELS:
         name = f"{level:.0%}".rstrip("%")
-        frame[f"low_{name}"], frame[f"high_{name}"] = model.interval(predicted, level)
+        exists = level in model.states_[state].calibration.factors_
+        ends = model.interval(predicted, level) if exists else (np.nan, np.nan)
+        frame[f"low_{name}"], frame[f"high_{name}"] = ends
     return frame
 
 
@@ -142,6 +143,8 @@ def _state_figures(frame: pd.DataFrame, state: str) -> Iterable[dict[str, object
     )
     for level in LEVELS:
         name = f"{level:.0%}".rstrip("%")
+        if frame[f"low_{name}"].isna().any():
+            continue
         inside = observed.between(frame[f"low_{name}"], frame[f"high_{name}"]).astype(float)
         groups = _by_group(inside, frame)
         row = _row(
@@ -164,7 +167,8 @@ def summarise(predictions: pd.DataFrame) -> pd.DataFrame:
     -------
     pandas.DataFrame
         Columns figure, state, value, low, high (90 %: bootstrap over materials; exact binomial
-        for coverage), median, worst, worst_group, n_groups, n_rows.
+        for coverage), median, worst, worst_group, n_groups, n_rows. A level that the number of
+        materials could not support has no row.
     """
     rows: list[dict[str, object]] = []
     for state in (NEW, ON_RECORD):

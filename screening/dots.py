@@ -16,6 +16,7 @@ import pandas as pd
 from features.confinement_features import ConfinementFeatures
 from features.size_gap import SMALLEST_DIAMETER_nm, size_band
 from screening.blending import BlendedRegressor, LeftOut, blend
+from screening.bulk_spread import particle_gap_spread_eV
 from screening.calibration import GroupCalibration
 from screening.covariance import CovarianceTerm, FloatArray
 
@@ -122,7 +123,7 @@ class SizeGapModel:
             X,
             self._target,
             noise_sd=self._noise,
-            sample_weight=votes.to_numpy(),
+            tree_weight=votes.to_numpy(),
             start=theta,
             max_iter=200 if theta is None else 0,
         )
@@ -137,22 +138,22 @@ class SizeGapModel:
             ON_RECORD: self.regressor_.left_out(np.where(ranges == "", materials, ranges)),
         }
         self.states_ = {
-            NEW: self._learn_state(NEW, np.ones(len(materials), dtype=bool)),
-            ON_RECORD: self._learn_state(ON_RECORD, ranges != ""),
+            NEW: self._learn_state(NEW, materials),
+            ON_RECORD: self._learn_state(ON_RECORD, ranges),
         }
         return self
 
-    def _learn_state(self, state: str, use: Any) -> State:
-        """Weigh and calibrate on the rows that the state can leave out, one vote a material."""
+    def _learn_state(self, state: str, labels: Any) -> State:
+        """Weigh and calibrate on the labelled rows, one vote a left-out group."""
+        use = labels != ""
         left = self.left_out_[state]
         part = LeftOut(left.gaussian[use], left.trees[use], left.sd[use])
-        materials = self.rows_["material"].to_numpy()[use]
-        votes = self.rows_["vote"].to_numpy()[use]
-        weight = self.regressor_.weigh_rows(self._target[use], part, materials, votes)
+        groups, votes = labels[use], self.rows_["vote"].to_numpy()[use]
+        weight = self.regressor_.weigh_rows(self._target[use], part, groups, votes)
         mean, sd = part.blend(weight)
         total = np.hypot(sd, self._noise[use])
         calibration = GroupCalibration(state=f"state {state!r}").fit(
-            self._target[use] - mean, total, materials, votes
+            self._target[use] - mean, total, groups, votes
         )
         return State(weight, calibration)
 
@@ -200,7 +201,7 @@ class SizeGapModel:
         weight = state.map(weights).to_numpy(dtype=np.float64)
         learned, spread = blend(gaussian, trees, sd, np.asarray(weight, dtype=np.float64))
         noise = self.regressor_.gaussian_.noise_
-        bulk_sd = candidates["gap_sd_eV"].to_numpy() / scale
+        bulk_sd = _constants_spread_eV(candidates) / scale
         total = np.sqrt(spread**2 + noise**2 + bulk_sd**2) * scale
         return pd.DataFrame(
             {
@@ -218,6 +219,8 @@ class SizeGapModel:
         low, high = np.empty(len(predicted)), np.empty(len(predicted))
         for name, state in self.states_.items():
             rows = predicted["record_state"].to_numpy() == name
+            if not rows.any():
+                continue
             mean = predicted["optical_gap_eV"].to_numpy()[rows]
             sd = predicted["model_sd_eV"].to_numpy()[rows]
             low[rows], high[rows] = state.calibration.interval(mean, sd, level)
@@ -265,6 +268,15 @@ class SizeGapModel:
         mean = frame["gap_eV"].to_numpy() + features["finite_barrier_shift_eV"].to_numpy()
         scale = 1.0 / np.maximum(frame["diameter_nm"].to_numpy(dtype=float), SMALLEST_DIAMETER_nm)
         return block.astype(np.float64), mean, scale
+
+
+def _constants_spread_eV(candidates: pd.DataFrame) -> FloatArray:
+    """Return what the bulk constants' uncertainty leaves: all of them where they are estimated."""
+    gap_sd = candidates["gap_sd_eV"].to_numpy(dtype=np.float64)
+    if "basis" not in candidates:
+        return gap_sd
+    spread = particle_gap_spread_eV(candidates)
+    return np.where(candidates["basis"].eq("record"), gap_sd, spread)
 
 
 def _codes(values: pd.Series) -> dict[str, int]:

@@ -5,9 +5,8 @@ from pathlib import Path
 import pandas as pd
 
 from features.errors import FewnmError
-from features.semiconductors import bulk_constants
 from features.size_gap import LARGEST_DIAMETER_nm, SMALLEST_DIAMETER_nm
-from screening.candidates import pair_frame
+from screening.candidates import constants_of, pair_frame
 from screening.dots import SizeGapModel
 from screening.ranking import caution_column, nearest_records
 from screening.scores import describe
@@ -65,7 +64,7 @@ def _material_faults(materials: pd.Series) -> list[str]:
     wrong: dict[str, str] = {}
     for text in materials.fillna("").unique():
         try:
-            bulk_constants([text])
+            constants_of([text])
         except FewnmError as error:
             wrong[text] = str(error)
     return [
@@ -83,7 +82,7 @@ def predict_pairs(
     Parameters
     ----------
     pairs : pandas.DataFrame
-        Columns material, diameter_nm and optionally structure, shape.
+        Columns material, diameter_nm and optionally structure, shape; or as from ``pair_frame``.
     model : SizeGapModel
     size_spread : float, default 0.07
         Standard deviation of the diameter over its mean; sets the linewidth.
@@ -98,7 +97,8 @@ def predict_pairs(
     UnknownMaterialError, FormulaError
         If a material is unknown or not a formula.
     """
-    frame = describe(model, pair_frame(pairs), size_spread)
+    ready = pairs if "gap_eV" in pairs else pair_frame(pairs)
+    frame = describe(model, ready, size_spread)
     frame["nearest_source"] = nearest_records(frame, model)
     frame["validity"] = _validity(frame, model)
     frame["cautions"] = caution_column(frame["material"])

@@ -7,7 +7,9 @@ from typing import Any
 
 import pandas as pd
 
+from features.size_gap import training_rows
 from features.tables import read_table
+from screening.candidates import choose_materials
 from screening.fingerprint import text_hash
 from screening.outputs import (
     build_manifest,
@@ -71,6 +73,8 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
     """
     from screening.reporting.report import render_report  # noqa: PLC0415 - figures load slowly
 
+    # What cannot be ranked is said before a model is trained for it.
+    choose_materials(specification.candidates, training_rows()["material"])
     result = rank(specification, trained_dots(specification.seed))
     model_hash = dot_fingerprint(specification.seed)
     table = csv_text(result.shortlist)

@@ -1,0 +1,91 @@
+"""Adsorption energies for tables of surfaces, and of particles by site class."""
+
+from pathlib import Path
+
+import pandas as pd
+
+from features.errors import FewnmError
+from features.particle import site_table
+from screening.adsorption import AdsorptionModel, adsorption_model
+from screening.user_tables import collect_faults, numeric_column, read_user_table
+
+__all__ = ["answer_surfaces"]
+
+_SMALLEST_nm = 0.5
+_LARGEST_nm = 20.0
+
+
+def answer_surfaces(path: Path) -> pd.DataFrame:
+    """Answer a table of adsorption questions, in the order given.
+
+    Parameters
+    ----------
+    path : pathlib.Path
+        CSV with columns material, adsorbate and optionally structure, facet (an extended surface,
+        its most stable site), or diameter_nm and shape (a particle, one row a site class).
+
+    Returns
+    -------
+    pandas.DataFrame
+        The questions with adsorption_energy_eV, its 90 % ends, standard deviation, record_state
+        and nearest_source.
+
+    Raises
+    ------
+    TableError
+        With all faulty rows at once.
+    """
+    optional = ("structure", "facet", "diameter_nm", "shape")
+    frame = read_user_table(path, ("material", "adsorbate"), optional)
+    frame[["material", "adsorbate"]] = frame[["material", "adsorbate"]].fillna("")
+    model = adsorption_model()
+    if "diameter_nm" not in frame:
+        return _surfaces(path.name, model, frame)
+    return _particles(path.name, model, frame)
+
+
+def _surfaces(where: str, model: AdsorptionModel, frame: pd.DataFrame) -> pd.DataFrame:
+    try:
+        answer = model.predict_surfaces(frame)
+    except FewnmError:
+        collect_faults(where, _row_faults(model, frame))
+        raise
+    return frame.join(answer)
+
+
+def _row_faults(model: AdsorptionModel, frame: pd.DataFrame) -> list[str]:
+    """Ask each row alone, to name every faulty one."""
+    faults = []
+    for position in range(len(frame)):
+        try:
+            model.predict_surfaces(frame.iloc[[position]])
+        except FewnmError as error:
+            faults.append(f"row {position + 2}: {error}")
+    return faults
+
+
+def _particles(where: str, model: AdsorptionModel, frame: pd.DataFrame) -> pd.DataFrame:
+    if "shape" not in frame:
+        frame["shape"] = None
+    frame["diameter_nm"], faults = numeric_column(
+        frame, "diameter_nm", _SMALLEST_nm, _LARGEST_nm, "nm"
+    )
+    collect_faults(where, faults)
+    answers = []
+    for number, row in enumerate(frame.to_dict("records"), start=2):
+        try:
+            answers.append(_sites(model, row))
+        except FewnmError as error:
+            faults.append(f"row {number}: {error}")
+    collect_faults(where, faults)
+    return pd.concat(answers, ignore_index=True)
+
+
+def _sites(model: AdsorptionModel, row: dict[str, object]) -> pd.DataFrame:
+    """Return one row a site class of one particle."""
+    material, shape = str(row["material"]), row["shape"] or "truncated octahedron"
+    sites = site_table(material, str(shape), float(str(row["diameter_nm"])))
+    energies = model.predict_sites(material, str(row["adsorbate"]), sites)
+    asked = {"material": material, "shape": shape, "diameter_nm": row["diameter_nm"]}
+    head = pd.DataFrame([asked | {"adsorbate": row["adsorbate"]}] * len(sites))
+    return pd.concat([head, sites, energies], axis=1)

@@ -1,0 +1,98 @@
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from features.errors import SpecificationError
+from features.tables import packaged_path
+from screening.specification import load_specification, parse_specification
+
+GOOD = {"target": {"window_nm": [625.0, 635.0]}}
+
+
+def test_nm_and_eV_describe_the_same_window():
+    by_nm = parse_specification(GOOD).target.energies_eV
+    by_eV = parse_specification({"target": {"window_eV": list(by_nm)}}).target.energies_eV
+    assert by_eV == pytest.approx(by_nm)
+    assert by_nm[0] < by_nm[1]
+
+
+@pytest.mark.parametrize(
+    "path", sorted(packaged_path("configs").glob("*.toml")), ids=lambda p: p.stem
+)
+def test_every_packaged_specification_is_valid(path):
+    assert load_specification(path).title
+
+
+@pytest.mark.parametrize(
+    ("change", "message"),
+    [
+        ({"target": {"window_mn": [625, 635]}}, "unknown key 'window_mn'.*did you mean window_"),
+        ({"laboratory": {"spread": 0.1}}, "unknown key 'spread'.*did you mean size_spread"),
+        ({"colour": "red"}, "unknown key 'colour'.*expected one of title, target"),
+        ({"target": {"window_nm": [635, 625]}}, "upside down"),
+        ({"target": {"window_nm": [625, 625]}}, "upside down"),
+        ({"target": {"window_nm": [1.9, 2.0]}}, "are these eV"),
+        ({"target": {"window_eV": [520, 530]}}, "are these nm"),
+        ({"target": {"window_nm": [625, 635], "window_eV": [1.9, 2.0]}}, "exactly one"),
+        ({"target": {}}, "exactly one"),
+        ({"target": {"window_nm": [625]}}, "at least 2 items"),
+        ({"target": {"window_nm": ["red", 635]}}, "valid number"),
+        ({"target": {"window_nm": [float("nan"), 635]}}, "finite"),
+        (
+            {"target": {"window_nm": [625, 635], "quantity": "colour"}},
+            "'emission' or 'optical_gap'",
+        ),
+        ({"candidates": {"diameter_nm": [-1, 5]}}, "where the model holds"),
+        ({"candidates": {"diameter_nm": [2, 500]}}, "where the model holds"),
+        ({"candidates": {"diameter_nm": [8, 2]}}, "where the model holds"),
+        ({"candidates": {"step_nm": 0}}, "greater than or equal"),
+        ({"candidates": {"exclude_elements": ["cadmium"]}}, "match pattern"),
+        ({"laboratory": {"size_spread": 0}}, "greater than 0"),
+        ({"shortlist": {"length": 0}}, "greater than or equal to 1"),
+        ({"seed": -1}, "greater than or equal to 0"),
+        ({"title": ""}, "at least 1 character"),
+    ],
+)
+def test_a_fault_is_named_with_its_place(change, message):
+    with pytest.raises(SpecificationError, match=message):
+        parse_specification(GOOD | change, "mine.toml")
+
+
+def test_all_faults_are_reported_at_once():
+    with pytest.raises(SpecificationError) as caught:
+        parse_specification(GOOD | {"colour": 1, "seed": -1}, "mine.toml")
+    assert len(str(caught.value).splitlines()) == 2
+
+
+@given(
+    st.recursive(
+        st.none() | st.booleans() | st.floats() | st.text(),
+        lambda inner: st.lists(inner) | st.dictionaries(st.text(), inner),
+        max_leaves=12,
+    )
+)
+def test_any_content_is_accepted_or_refused_in_plain_words(content):
+    try:
+        parse_specification({"target": content})
+    except SpecificationError as error:
+        assert str(error)
+
+
+@pytest.mark.parametrize(
+    ("raw", "message"),
+    [
+        (b"target = [", "not a TOML file"),
+        (b"\xff\xfe", "not UTF-8"),
+        (b"#" * 1_000_001, "too large"),
+    ],
+)
+def test_a_file_that_is_no_specification_is_refused(tmp_path, raw, message):
+    path = tmp_path / "spec.toml"
+    path.write_bytes(raw)
+    with pytest.raises(SpecificationError, match=message):
+        load_specification(path)
+
+
+def test_a_missing_file_is_named(tmp_path):
+    with pytest.raises(SpecificationError, match=r"gone\.toml"):
+        load_specification(tmp_path / "gone.toml")
