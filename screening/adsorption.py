@@ -132,7 +132,8 @@ class AdsorptionModel:
             If a material cannot be read or has an element without data.
         """
         rows = read_surfaces(frame, self.pure_.adsorbates_)
-        result = pd.concat([self._pure(rows), self._alloys(rows)]).reindex(rows.index)
+        parts = [self._pure(rows), self._alloys(rows)]
+        result = pd.concat([p for p in parts if len(p)] or parts[:1]).reindex(rows.index)
         result.index = frame.index
         return result
 
@@ -234,7 +235,7 @@ class AdsorptionModel:
     def _alloys(self, rows: pd.DataFrame) -> pd.DataFrame:
         alloys = rows[rows["first"] != rows["second"]]
         parts = [self._family(part) for _, part in alloys.groupby("adsorbate", sort=False)]
-        return pd.concat(parts) if parts else alloys.head(0)
+        return pd.concat(parts) if parts else alloys[[]]
 
     def _family(self, rows: pd.DataFrame) -> pd.DataFrame:
         """Predict alloys of one adsorbate, state by state."""

@@ -11,6 +11,7 @@ from collections.abc import Iterator
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 from sklearn.ensemble import ExtraTreesRegressor
 from sklearn.model_selection import GroupKFold
 
@@ -129,8 +130,8 @@ def _metal_baselines(train: pd.DataFrame, test: pd.DataFrame, metal: str) -> dic
     return dict(zip(METAL_BASELINES, out.T, strict=True))
 
 
-def _members(rows: pd.DataFrame, names: set[str]) -> FloatArray:
-    return (rows["first"].isin(names) | rows["second"].isin(names)).to_numpy()
+def _members(rows: pd.DataFrame, names: set[str]) -> NDArray[np.bool_]:
+    return np.asarray(rows["first"].isin(names) | rows["second"].isin(names))
 
 
 def _composition_averages(rows: pd.DataFrame) -> FloatArray:
@@ -154,7 +155,10 @@ def _alloy_baselines(train: pd.DataFrame, test: pd.DataFrame, seed: int) -> pd.D
 
 
 def evaluate_compositions(
-    n_splits: int = 5, seed: int = 0, alloys: pd.DataFrame | None = None
+    n_splits: int = 5,
+    seed: int = 0,
+    alloys: pd.DataFrame | None = None,
+    pure: pd.DataFrame | None = None,
 ) -> pd.DataFrame:
     """Predict every alloy row with its composition left out for all adsorbates.
 
@@ -163,8 +167,8 @@ def evaluate_compositions(
     n_splits : int, default 5
     seed : int, default 0
         Of the baseline trees.
-    alloys : pandas.DataFrame or None, default None
-        As from `alloy_rows`; None for the packaged tables.
+    alloys, pure : pandas.DataFrame or None, default None
+        As from `alloy_rows` and `pure_rows`; None for the packaged tables.
 
     Returns
     -------
@@ -173,14 +177,14 @@ def evaluate_compositions(
         and `ALLOY_BASELINES`.
     """
     alloys = alloy_rows() if alloys is None else alloys
-    pure = PureSurfaceModel().fit(pure_rows())
+    surfaces = PureSurfaceModel().fit(pure_rows() if pure is None else pure)
     parts = []
     for fold, held in enumerate(_folds(alloys["composition"], n_splits)):
         out = alloys["composition"].isin(held)
         for members in FAMILIES.values():
             own = alloys["adsorbate"].isin(members)
             if (own & out).any():
-                found = _composition_fold(alloys[own & ~out], alloys[own & out], pure, members)
+                found = _composition_fold(alloys[own & ~out], alloys[own & out], surfaces, members)
                 parts.append(_alloy_baselines(alloys[own & ~out], found.assign(fold=fold), seed))
     found = pd.concat(parts).sort_index()
     found = found.assign(material=found["composition"], group=found["composition"])
@@ -197,7 +201,10 @@ def _composition_fold(
 
 
 def evaluate_elements(
-    n_splits: int = 5, seed: int = 0, alloys: pd.DataFrame | None = None
+    n_splits: int = 5,
+    seed: int = 0,
+    alloys: pd.DataFrame | None = None,
+    pure: pd.DataFrame | None = None,
 ) -> pd.DataFrame:
     """Predict every alloy row once for either element, all data of that element left out.
 
@@ -210,8 +217,8 @@ def evaluate_elements(
         Folds of elements for the covariance parameters and the calibration.
     seed : int, default 0
         Of the baseline trees.
-    alloys : pandas.DataFrame or None, default None
-        As from `alloy_rows`; None for the packaged tables.
+    alloys, pure : pandas.DataFrame or None, default None
+        As from `alloy_rows` and `pure_rows`; None for the packaged tables.
 
     Returns
     -------
@@ -219,7 +226,7 @@ def evaluate_elements(
         Columns as from `evaluate_metals`, with the element as group, and `ALLOY_BASELINES`.
     """
     alloys = alloy_rows() if alloys is None else alloys
-    pure = pure_rows()
+    pure = pure_rows() if pure is None else pure
     parts = []
     for members in FAMILIES.values():
         rows = alloys[alloys["adsorbate"].isin(members)]
@@ -245,7 +252,7 @@ def _element_fold(
     tuned = PureSurfaceModel().fit(kept)
     train = rows[~_members(rows, held)]
     known = sorted(set(train["first"]) | set(train["second"]))
-    model = AlloySurfaceModel(members).fit(train, tuned)
+    model = AlloySurfaceModel(members).fit(train, tuned, compositions=False)
     model.calibrate_elements({e: _without(kept, e, tuned) for e in known})
     parts = []
     for element in sorted(held):
