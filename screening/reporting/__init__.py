@@ -1,0 +1,1 @@
+"""The report of a run: figures, colours, one HTML file."""
