@@ -120,6 +120,7 @@ def test_summary_counts_groups_rows_and_coverage():
             "adsorbate": "O",
             "energy_eV": [1.0, 1.0, 1.0, 5.0],
             "model": 2.0,
+            "noise_sd_eV": [0.1, 0.1, 0.1, 1.5],
             "low_90%": 0.0,
             "high_90%": 4.0,
         }
@@ -129,6 +130,7 @@ def test_summary_counts_groups_rows_and_coverage():
     assert row["n_rows"] == 4
     assert row["n_groups"] == 2
     assert row["error of model"] == pytest.approx(1.5)
+    assert row["error of model, well-sampled rows"] == pytest.approx(1.0)
     assert row["error of mean"] == pytest.approx(1.0)
     assert row["coverage by rows"] == pytest.approx(0.75)
     assert row["coverage by groups"] == pytest.approx(0.5)
