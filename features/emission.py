@@ -119,7 +119,7 @@ def ensemble_fwhm_eV(
     0.154
     """
     spread = FWHM_PER_SD * np.abs(slope_eV_per_nm) * np.asarray(diameter_sd_nm)
-    return np.hypot(np.asarray(single_dot_fwhm_eV, dtype=np.float64), spread)
+    return np.asarray(np.hypot(np.asarray(single_dot_fwhm_eV, dtype=np.float64), spread))
 
 
 def integrated_fwhm_eV(

@@ -74,7 +74,7 @@ def _particles(where: str, model: AdsorptionModel, frame: pd.DataFrame) -> pd.Da
     answers = []
     for number, row in enumerate(frame.to_dict("records"), start=2):
         try:
-            answers.append(_sites(model, row))
+            answers.append(_sites(model, {str(name): value for name, value in row.items()}))
         except FewnmError as error:
             faults.append(f"row {number}: {error}")
     collect_faults(where, faults)

@@ -6,7 +6,6 @@ from hypothesis import settings
 from features.size_gap import training_rows
 from screening.dots import SizeGapModel
 
-
 # Machines differ in speed: a property is true or false, not fast or slow.
 settings.register_profile("steady", deadline=None, derandomize=True)
 settings.load_profile("steady")

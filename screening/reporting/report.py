@@ -171,7 +171,7 @@ def _changes(result: RankResult) -> list[str]:
             f"The first two differ by {gap:.1%} in chance; a difference below a few per cent is "
             "not a reason to prefer one."
         )
-    tight = listed.loc[listed["size_tolerance_nm"].idxmin()]
+    tight = listed.iloc[int(listed["size_tolerance_nm"].to_numpy().argmin())]
     notes.append(
         f"{tight['material']} needs the tightest size control "
         f"({tight['size_tolerance_nm']:.2f} nm); a mean diameter that is off by more moves it out."
@@ -194,13 +194,15 @@ def _sources(result: RankResult) -> list[dict[str, Any]]:
         [t.loc[t["material"].isin(materials), ["source", "material"]] for t in (records, bulk)]
     )
     by_source = used.groupby("source")["material"].agg(lambda names: ", ".join(sorted(set(names))))
-    table = read_table("sources").set_index("source")
+    table = read_table("sources").set_index("source").loc[by_source.index]
     return [
         {
             "source": source,
             "materials": names,
-            "citation": table.loc[source, "citation"],
-            "recalled": table.loc[source, "read_in"] == "from memory",
+            "citation": citation,
+            "recalled": read_in == "from memory",
         }
-        for source, names in by_source.items()
+        for source, names, citation, read_in in zip(
+            by_source.index, by_source, table["citation"], table["read_in"], strict=True
+        )
     ]

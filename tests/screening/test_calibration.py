@@ -41,7 +41,7 @@ def test_a_level_needs_enough_groups(n_groups, refused):
     )
     assert calibration.refused_ == refused
     for level in refused:
-        with pytest.raises(CalibrationError, match="at least [49] left-out groups, found"):
+        with pytest.raises(CalibrationError, match=r"at least [49] left-out groups, found"):
             calibration.factor(level)
 
 

@@ -1,3 +1,5 @@
+from contextlib import suppress
+
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
@@ -72,10 +74,9 @@ def test_all_faults_are_reported_at_once():
     )
 )
 def test_any_content_is_accepted_or_refused_in_plain_words(content):
-    try:
-        parse_specification({"target": content})
-    except SpecificationError as error:
-        assert str(error)
+    # Any other exception fails the test; acceptance needs a valid window.
+    with suppress(SpecificationError):
+        assert parse_specification({"target": content}).target.energies_eV
 
 
 @pytest.mark.parametrize(
