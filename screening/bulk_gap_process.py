@@ -19,7 +19,7 @@ from screening.gaussian import GroupedGaussianProcess
 __all__ = ["ProcessAverage"]
 
 _DEGREES_OF_FREEDOM = 4.0
-_SAMPLE_ROWS = 500
+_SAMPLE_ROWS = 600
 _MAX_ITER = 18
 
 

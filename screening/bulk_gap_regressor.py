@@ -65,7 +65,9 @@ class GapRegressor:
     Attributes
     ----------
     gaussian_weight_ : float
-        Weight of the Gaussian processes, by skill on left-out chemical systems.
+        Weight of the Gaussian processes: half-way between equal weights and the weight that
+        left-out chemical systems give, because estimated weights overshoot (Smith and Wallis,
+        Oxf. Bull. Econ. Stat. 71, 331 (2009)).
     calibration_ : GroupCalibration
         From left-out chemical systems.
     """
@@ -137,7 +139,8 @@ class GapRegressor:
         """Weigh both learners and calibrate by their left-out predictions."""
         mean, sd = self.gaussian_.left_mean_, self.gaussian_.left_sd_
         trees = self._left_out_trees(X, y, groups, votes)
-        self.gaussian_weight_ = blend_weight(y, mean, trees, group_weights(groups, votes))
+        skill = blend_weight(y, mean, trees, group_weights(groups, votes))
+        self.gaussian_weight_ = 0.5 * (skill + 0.5)
         mixed, spread = blend(mean, trees, sd, self.gaussian_weight_)
         self.calibration_ = GroupCalibration(state="new composition").fit(
             y - mixed, np.hypot(spread, self.gaussian_.noise_), groups, votes
