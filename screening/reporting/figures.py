@@ -22,6 +22,7 @@ _COLOURS = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#E69F00", "#56B4E9")
 _STYLES = ("-", "--", "-.", ":")
 _MARKS = ("o", "s", "^", "D", "v", "P")
 _MOST_LINES = 6
+_LONGEST_NAME = 24
 
 
 def new_axes(width_in: float = 7.2, height_in: float = 4.2) -> Any:
@@ -33,6 +34,11 @@ def _quantity(result: "RankResult") -> tuple[str, str]:
     if result.specification.target.quantity == "emission":
         return "emission_eV", "Emission energy (eV)"
     return "optical_gap_eV", "Optical gap (eV)"
+
+
+def _clipped(name: str) -> str:
+    """Keep a long name from pushing the axes off the figure."""
+    return name if len(name) <= _LONGEST_NAME else f"{name[:_LONGEST_NAME]}…"
 
 
 def draw_map(result: "RankResult", ax: Any = None) -> Any:
@@ -72,7 +78,7 @@ def _draw_material(
         curve[column],
         _STYLES[position % len(_STYLES)],
         color=colour,
-        label=material,
+        label=_clipped(material),
     )
     ax.fill_between(
         curve["diameter_nm"],
@@ -130,7 +136,7 @@ def draw_intervals(result: "RankResult", ax: Any = None) -> Any:
             listed[column][rows], place[rows], xerr=errors, fmt=mark, capsize=3, label=state
         )
     names = [
-        f"{rank}. {material} {diameter:.2f} nm"
+        f"{rank}. {_clipped(material)} {diameter:.2f} nm"
         for rank, material, diameter in zip(
             listed["rank"], listed["material"], listed["diameter_nm"], strict=True
         )

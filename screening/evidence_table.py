@@ -1,0 +1,43 @@
+"""The table of left-out figures that the README prints, made from the packaged evidence."""
+
+import pandas as pd
+
+from features.tables import read_table
+
+__all__ = ["evidence_markdown"]
+
+_ROWS = {
+    "mean_absolute_error_eV": "mean absolute error (eV)",
+    "mean_absolute_error_eV, without low-confidence records": "the same, low-confidence records out (eV)",
+    "coverage_90": "share inside the 90 % interval",
+    "mean_width_90_eV": "mean width of the 90 % interval (eV)",
+    "mean_absolute_error_eV, Brus 1984": "error of the Brus formula (eV)",
+    "mean_absolute_error_eV, two-band": "error of the two-band model (eV)",
+    "mean_absolute_error_eV, nearest material's curve": "error of the nearest material's curve (eV)",
+    "mean_absolute_error_eV, linear size law": "error of a linear size law (eV)",
+}
+
+
+def evidence_markdown() -> str:
+    """Return the figures as a Markdown table.
+
+    Returns
+    -------
+    str
+        One row a figure; both states as columns, the 90 % interval of each figure in brackets.
+    """
+    figures = read_table("held_out_figures").set_index(["figure", "state"])
+    lines = ["| figure | new material | material on record |", "|---|---|---|"]
+    for key, label in _ROWS.items():
+        cells = [_cell(figures, key, state) for state in ("new", "on record")]
+        lines.append(f"| {label} | {cells[0]} | {cells[1]} |")
+    groups = [int(figures.loc[("coverage_90", s), "n_groups"]) for s in ("new", "on record")]
+    lines.append(f"| materials | {groups[0]} | {groups[1]} |")
+    return "\n".join(lines)
+
+
+def _cell(figures: pd.DataFrame, key: str, state: str) -> str:
+    if (key, state) not in figures.index:
+        return "-"
+    row = figures.loc[(key, state)]
+    return f"{row['value']:.2f} ({row['low']:.2f} to {row['high']:.2f})"
