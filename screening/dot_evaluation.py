@@ -19,7 +19,16 @@ from screening.dots import NEW, ON_RECORD, SizeGapModel, range_groups
 
 __all__ = ["evaluate_dots", "summarise"]
 
-_KEEP = ["record", "material", "family", "diameter_nm", "confidence", "vote", "optical_gap_eV"]
+_KEEP = [
+    "record",
+    "material",
+    "family",
+    "diameter_nm",
+    "confidence",
+    "vote",
+    "noise_eV",
+    "optical_gap_eV",
+]
 
 
 def evaluate_dots(rows: pd.DataFrame, n_jobs: int = 1, seed: int = 0) -> pd.DataFrame:
@@ -37,7 +46,7 @@ def evaluate_dots(rows: pd.DataFrame, n_jobs: int = 1, seed: int = 0) -> pd.Data
     -------
     pandas.DataFrame
         One row a record and state: record, material, family, diameter_nm, confidence, vote,
-        optical_gap_eV, state, predicted_gap_eV, low_50 ... high_90 and, for *new*, a column for
+        noise_eV, optical_gap_eV, state, predicted_gap_eV, low_50 ... high_90 and, for *new*, a column for
         each baseline.
     """
     materials = sorted(rows["material"].unique())
@@ -132,6 +141,9 @@ def _state_figures(frame: pd.DataFrame, state: str) -> Iterable[dict[str, object
     for figure, error in errors.items():
         groups = _by_group(error, frame)
         yield _row(figure, state, groups, _bootstrap(groups), len(frame))
+    # The mean size of an error that is normal and as large as the records say of themselves.
+    floor = _by_group(frame["noise_eV"] * np.sqrt(2.0 / np.pi), frame)
+    yield _row("error_expected_from_record_noise_eV", state, floor, _bootstrap(floor), len(frame))
     read = frame[frame["confidence"].ne("low")]
     groups = _by_group((read["predicted_gap_eV"] - read["optical_gap_eV"]).abs(), read)
     yield _row(
