@@ -46,8 +46,8 @@ def evaluate_dots(rows: pd.DataFrame, n_jobs: int = 1, seed: int = 0) -> pd.Data
     -------
     pandas.DataFrame
         One row a record and state: record, material, family, diameter_nm, confidence, vote,
-        noise_eV, optical_gap_eV, state, predicted_gap_eV, low_50 ... high_90 and, for *new*, a column for
-        each baseline.
+        noise_eV, optical_gap_eV, state, predicted_gap_eV, low_50 ... high_90 and, for *new*, a
+        column for each baseline.
     """
     materials = sorted(rows["material"].unique())
     parts = Parallel(n_jobs=n_jobs)(
