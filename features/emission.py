@@ -115,8 +115,8 @@ def ensemble_fwhm_eV(
 
     Examples
     --------
-    >>> round(float(ensemble_fwhm_eV(0.06, -0.3, 0.2)), 3)
-    0.154
+    >>> round(float(ensemble_fwhm_eV(0.06, -0.3, 0.25)), 3)
+    0.187
     """
     spread = FWHM_PER_SD * np.abs(slope_eV_per_nm) * np.asarray(diameter_sd_nm)
     return np.asarray(np.hypot(np.asarray(single_dot_fwhm_eV, dtype=np.float64), spread))
@@ -146,9 +146,9 @@ def integrated_fwhm_eV(
 
     Examples
     --------
-    >>> width = integrated_fwhm_eV(lambda d: 3.0 - 0.3 * d, 4.0, 0.2, 0.06)
+    >>> width = integrated_fwhm_eV(lambda d: 3.0 - 0.3 * d, 4.0, 0.25, 0.06)
     >>> round(width, 3)
-    0.154
+    0.187
     """
     offsets = np.linspace(-5.0, 5.0, 801)
     diameters = np.maximum(diameter_nm + offsets * diameter_sd_nm, 0.1)
@@ -157,5 +157,7 @@ def integrated_fwhm_eV(
     sd = single_dot_fwhm_eV / FWHM_PER_SD
     grid = np.linspace(centres.min() - 4.0 * sd, centres.max() + 4.0 * sd, 4001)
     spectrum = np.exp(-0.5 * ((grid[:, None] - centres) / sd) ** 2) @ weights
-    above = grid[spectrum >= 0.5 * spectrum.max()]
-    return float(above[-1] - above[0])
+    half, top = 0.5 * spectrum.max(), int(spectrum.argmax())
+    rise = np.interp(half, spectrum[: top + 1], grid[: top + 1])
+    fall = np.interp(half, spectrum[top:][::-1], grid[top:][::-1])
+    return float(fall - rise)

@@ -21,9 +21,10 @@ def test_every_value_is_traceable_to_a_source_row():
 
 def test_every_source_serves_a_table():
     used = set()
-    for name in table_names():
-        if name != "sources" and "source" in read_table(name):
-            used |= set(read_table(name)["source"])
+    for resource in read_package()["resources"]:
+        for key in resource["schema"].get("foreignKeys", []):
+            if key["reference"]["resource"] == "sources":
+                used |= set(read_table(resource["name"])[key["fields"][0]].dropna())
     assert set(read_table("sources")["source"]) <= used
 
 

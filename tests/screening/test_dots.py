@@ -1,3 +1,5 @@
+from pathlib import Path
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -5,6 +7,9 @@ import pytest
 from screening.candidates import pair_frame
 from screening.dots import NEW, ON_RECORD, SizeGapModel, range_groups
 from screening.predicting import predict_pairs
+
+# Each tolerance covers the spread of the published figure itself; sources stand in the file.
+POINTS = pd.read_csv(Path(__file__).parents[1] / "reference" / "dot_points.csv")
 
 
 def ask(model, material, *diameters):
@@ -31,19 +36,11 @@ def test_the_gap_falls_with_size_and_stays_above_bulk(model, material):
 
 
 @pytest.mark.parametrize(
-    ("material", "diameter_nm", "gap_eV"),
-    [
-        # Peng, Peng et al. and others: PbS of 1.0 eV is about 4.3 nm (common practice).
-        ("PbS", 4.3, 1.02),
-        # Green InP of 530 nm emission is about 2.5 to 3 nm (common practice).
-        ("InP", 2.7, 2.35),
-        # CdTe of 3.3 nm absorbs near 2.2 eV (common practice).
-        ("CdTe", 3.3, 2.2),
-    ],
+    "row", POINTS.to_dict("records"), ids=lambda r: f"{r['material']} {r['diameter_nm']}"
 )
-def test_trade_facts_lie_inside_the_ninety_per_cent_interval(model, material, diameter_nm, gap_eV):
-    answer = ask(model, material, diameter_nm).iloc[0]
-    assert answer["optical_gap_low_eV"] < gap_eV < answer["optical_gap_high_eV"]
+def test_published_sizes_give_their_known_gap(model, row):
+    answer = ask(model, row["material"], row["diameter_nm"]).iloc[0]
+    assert answer["optical_gap_eV"] == pytest.approx(row["optical_gap_eV"], abs=row["tolerance_eV"])
 
 
 def test_a_new_material_is_less_sure_than_one_on_record(model):
