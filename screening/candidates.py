@@ -1,6 +1,7 @@
 """Candidates of the emission track: material x diameter, with the reason for each refusal."""
 
 from collections.abc import Iterable
+from typing import TYPE_CHECKING
 
 import numpy as np
 import pandas as pd
@@ -8,7 +9,9 @@ import pandas as pd
 from features.errors import NothingQualifiesError, SpecificationError, UnknownMaterialError, explain
 from features.formula import parse_formula
 from features.semiconductors import bulk_constants, known_materials, match_material
-from screening.specification import Candidates
+
+if TYPE_CHECKING:
+    from screening.specification import Candidates
 
 __all__ = ["candidate_grid", "choose_materials", "constants_of", "pair_frame"]
 
@@ -17,7 +20,7 @@ _USUAL_SHAPE = {"halide perovskite": "cube"}
 
 
 def choose_materials(
-    wanted: Candidates, on_record: Iterable[str]
+    wanted: "Candidates", on_record: Iterable[str]
 ) -> tuple[list[str], pd.DataFrame]:
     """Return the materials of a specification and those refused, with reasons.
 
@@ -65,7 +68,7 @@ def choose_materials(
     return kept, pd.DataFrame(refused, columns=["material", "reason"])
 
 
-def _named(wanted: Candidates) -> list[str]:
+def _named(wanted: "Candidates") -> list[str]:
     if not wanted.materials:
         return known_materials()
     try:
@@ -74,7 +77,7 @@ def _named(wanted: Candidates) -> list[str]:
         raise SpecificationError(f"candidates.materials: {error}") from None
 
 
-def _check_families(wanted: Candidates, families: pd.Series) -> None:
+def _check_families(wanted: "Candidates", families: pd.Series) -> None:
     known = sorted(families.unique())
     for family in wanted.families:
         if family not in known:
@@ -87,7 +90,7 @@ def _check_families(wanted: Candidates, families: pd.Series) -> None:
             )
 
 
-def _refusal(name: str, family: str, wanted: Candidates, recorded: set[str]) -> str:
+def _refusal(name: str, family: str, wanted: "Candidates", recorded: set[str]) -> str:
     excluded = sorted(set(parse_formula(name).amounts) & set(wanted.exclude_elements))
     if excluded:
         return f"contains excluded {', '.join(excluded)}"
@@ -137,7 +140,7 @@ def pair_frame(pairs: pd.DataFrame) -> pd.DataFrame:
     return frame
 
 
-def candidate_grid(materials: list[str], wanted: Candidates) -> pd.DataFrame:
+def candidate_grid(materials: list[str], wanted: "Candidates") -> pd.DataFrame:
     """Return every material at every diameter of the specification.
 
     Parameters

@@ -1,7 +1,7 @@
 """The main job: a specification in, a ranked shortlist with its evidence out."""
 
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
@@ -12,7 +12,9 @@ from features.hazards import caution_text
 from screening.candidates import candidate_grid, choose_materials
 from screening.dots import ON_RECORD, SizeGapModel
 from screening.scores import Window, describe, score
-from screening.specification import Specification
+
+if TYPE_CHECKING:
+    from screening.specification import Specification
 
 __all__ = ["COLUMNS", "RankResult", "caution_column", "nearest_records", "rank"]
 
@@ -54,7 +56,7 @@ class RankResult:
     model : SizeGapModel
     """
 
-    specification: Specification
+    specification: "Specification"
     shortlist: pd.DataFrame
     scored: pd.DataFrame
     rejected: pd.DataFrame
@@ -88,7 +90,7 @@ class RankResult:
         return str(self.shortlist.to_html(index=False, escape=True, float_format="{:.3f}".format))
 
 
-def rank(specification: Specification, model: SizeGapModel) -> RankResult:
+def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
     """Rank the candidates of a specification by their calibrated chance.
 
     Parameters
@@ -141,7 +143,7 @@ def _ordered(scored: pd.DataFrame) -> pd.DataFrame:
     return ordered.drop(columns=["_chance", "_room"])
 
 
-def _shortlist(scored: pd.DataFrame, specification: Specification) -> pd.DataFrame:
+def _shortlist(scored: pd.DataFrame, specification: "Specification") -> pd.DataFrame:
     """Take the best diameters of each material, apart by the stated spacing."""
     cut = specification.shortlist
     ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)])
@@ -160,7 +162,7 @@ def _shortlist(scored: pd.DataFrame, specification: Specification) -> pd.DataFra
     return ordered.loc[rows].copy()
 
 
-def _missed(scored: pd.DataFrame, specification: Specification) -> pd.DataFrame:
+def _missed(scored: pd.DataFrame, specification: "Specification") -> pd.DataFrame:
     """List materials whose best chance stays below the least."""
     least = specification.shortlist.least_chance
     best = scored.groupby("material", sort=True)["chance_in_window"].max()
@@ -169,7 +171,7 @@ def _missed(scored: pd.DataFrame, specification: Specification) -> pd.DataFrame:
     return pd.DataFrame({"material": short.index, "reason": reasons})
 
 
-def _nothing(scored: pd.DataFrame, specification: Specification) -> str:
+def _nothing(scored: pd.DataFrame, specification: "Specification") -> str:
     best = scored.iloc[int(np.argmax(scored["chance_in_window"]))]
     return explain(
         "no candidate qualifies",
