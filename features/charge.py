@@ -191,6 +191,6 @@ def require_semiconductor(compound: Compound) -> None:
                 "all constituents are metals",
                 where=f"formula {compound.formula!r}",
                 expected="a semiconductor",
-                do="metals have no gap; use the stability and catalysis commands for them",
+                do="metals have no gap; a table with a column adsorbate asks about metal surfaces",
             )
         )

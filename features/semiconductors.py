@@ -15,7 +15,7 @@ from features.errors import UnknownMaterialError, explain
 from features.formula import parse_formula
 from features.tables import read_table
 
-__all__ = ["CONSTANTS", "bulk_constants", "known_materials", "match_material"]
+__all__ = ["CONSTANTS", "bulk_constants", "has_indirect_gap", "known_materials", "match_material"]
 
 CONSTANTS = ("gap_eV", "electron_mass_m0", "hole_mass_m0", "dielectric")
 """Columns that the confinement models read."""
@@ -82,6 +82,26 @@ def match_material(text: str) -> str:
             + "`fewnm data bulk_semiconductors` lists them",
         )
     )
+
+
+@cache
+def has_indirect_gap(material: str) -> bool:
+    """Return whether the lowest bulk gap on record is indirect; False where nothing is on record.
+
+    Raises
+    ------
+    FormulaError
+        If the text is not a formula.
+
+    Examples
+    --------
+    >>> has_indirect_gap("Si"), has_indirect_gap("CdSe")
+    (True, False)
+    """
+    try:
+        return bool(_filled_table().loc[match_material(material), "gap_type"] == "indirect")
+    except UnknownMaterialError:
+        return False
 
 
 def bulk_constants(materials: Sequence[str]) -> pd.DataFrame:

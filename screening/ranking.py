@@ -9,6 +9,7 @@ import pandas as pd
 from features.errors import NothingQualifiesError, explain
 from features.formula import parse_formula
 from features.hazards import caution_text
+from features.semiconductors import has_indirect_gap
 from screening.candidates import candidate_grid, choose_materials
 from screening.dots import ON_RECORD, SizeGapModel
 from screening.scores import Window, describe, score
@@ -38,6 +39,8 @@ COLUMNS = (
     "cautions",
 )
 """Columns of the shortlist, in order."""
+
+_INDIRECT = "indirect bulk gap, emission may be weak and broad; "
 
 
 @dataclass(frozen=True)
@@ -212,6 +215,9 @@ def nearest_records(frame: pd.DataFrame, model: SizeGapModel) -> list[str]:
 
 
 def caution_column(materials: pd.Series) -> list[str]:
-    """Return the caution of each material in one cell."""
+    """Return the caution of each material in one cell, and whether it may hardly emit."""
     texts = {m: caution_text(dict(parse_formula(m).amounts)) for m in materials.unique()}
-    return [texts[material] for material in materials]
+    return [
+        f"{_INDIRECT}{texts[material]}" if has_indirect_gap(material) else texts[material]
+        for material in materials
+    ]

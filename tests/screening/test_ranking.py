@@ -5,7 +5,7 @@ import pytest
 from features.errors import NothingQualifiesError, SpecificationError
 from screening.candidates import candidate_grid, pair_frame
 from screening.dots import ON_RECORD
-from screening.ranking import COLUMNS, rank
+from screening.ranking import COLUMNS, caution_column, rank
 from screening.scores import Window, describe, score
 from screening.specification import Candidates, parse_specification
 
@@ -124,3 +124,9 @@ def test_the_result_shows_itself(result):
     assert result.to_frame().equals(result.shortlist)
     assert "<table" in result._repr_html_()
     assert 0.0 < result.chance_of_one() <= 1.0
+
+
+def test_an_indirect_gap_is_told_beside_the_cautions():
+    silicon, selenide = caution_column(pd.Series(["Si", "CdSe"]))
+    assert silicon.startswith("indirect bulk gap")
+    assert "indirect" not in selenide
