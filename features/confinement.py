@@ -1,11 +1,9 @@
-"""Optical gap of a small crystal from bulk constants: four textbook models.
+"""Optical gap of a small crystal from bulk constants: textbook models with hard walls.
 
 Diameters and radii in nm, energies in eV, masses in units of the free electron mass, dielectric
 constants relative. All functions broadcast over numpy arrays and never look anything up.
 Constants: CODATA values as shipped with SciPy.
 """
-
-from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -21,9 +19,8 @@ __all__ = [
     "brus_gap_eV",
     "coulomb_energy_eV",
     "exciton_bohr_radius_nm",
-    "finite_barrier_energy_eV",
-    "finite_barrier_gap_eV",
     "polarisation_energy_eV",
+    "positive",
     "reduced_mass",
     "sphere_confinement_eV",
     "surface_fraction",
@@ -42,8 +39,28 @@ BOHR_RADIUS_nm = constants.physical_constants["Bohr radius"][0] * 1e9
 _SERIES_TERMS = 60
 
 
-def _positive(**values: ArrayLike) -> list[FloatArray]:
-    """Return the values as arrays, or refuse what is not positive and finite."""
+def positive(**values: ArrayLike) -> list[FloatArray]:
+    """Return the values as arrays, or refuse what is not positive and finite.
+
+    Parameters
+    ----------
+    **values : array-like
+        Values by the name that a message would use.
+
+    Returns
+    -------
+    list of ndarray
+
+    Raises
+    ------
+    PhysicsRangeError
+        Naming the first value that is not positive and finite.
+
+    Examples
+    --------
+    >>> positive(diameter_nm=3)[0].item()
+    3.0
+    """
     arrays = []
     for name, value in values.items():
         array = np.asarray(value, dtype=np.float64)
@@ -79,7 +96,7 @@ def reduced_mass(electron_mass_m0: ArrayLike, hole_mass_m0: ArrayLike) -> FloatA
     >>> round(float(reduced_mass(0.13, 0.45)), 4)
     0.1009
     """
-    electron, hole = _positive(electron_mass_m0=electron_mass_m0, hole_mass_m0=hole_mass_m0)
+    electron, hole = positive(electron_mass_m0=electron_mass_m0, hole_mass_m0=hole_mass_m0)
     return electron * hole / (electron + hole)
 
 
@@ -112,7 +129,7 @@ def sphere_confinement_eV(diameter_nm: ArrayLike, reduced_mass_m0: ArrayLike) ->
     >>> round(float(sphere_confinement_eV(4.0, 0.1)), 3)
     0.94
     """
-    diameter, mass = _positive(diameter_nm=diameter_nm, reduced_mass_m0=reduced_mass_m0)
+    diameter, mass = positive(diameter_nm=diameter_nm, reduced_mass_m0=reduced_mass_m0)
     return KINETIC_eV_nm2 * np.pi**2 / (mass * (diameter / 2.0) ** 2)
 
 
@@ -141,7 +158,7 @@ def exciton_bohr_radius_nm(dielectric: ArrayLike, reduced_mass_m0: ArrayLike) ->
     >>> round(float(exciton_bohr_radius_nm(9.6, 0.1009)), 1)
     5.0
     """
-    epsilon, mass = _positive(dielectric=dielectric, reduced_mass_m0=reduced_mass_m0)
+    epsilon, mass = positive(dielectric=dielectric, reduced_mass_m0=reduced_mass_m0)
     return epsilon / mass * BOHR_RADIUS_nm
 
 
@@ -165,7 +182,7 @@ def coulomb_energy_eV(diameter_nm: ArrayLike, dielectric: ArrayLike) -> FloatArr
     ndarray
         Energy, eV, negative.
     """
-    diameter, epsilon = _positive(diameter_nm=diameter_nm, dielectric=dielectric)
+    diameter, epsilon = positive(diameter_nm=diameter_nm, dielectric=dielectric)
     si2, si4 = sici(2.0 * np.pi)[0], sici(4.0 * np.pi)[0]
     coefficient = 2.0 - si2 / np.pi + si4 / (2.0 * np.pi)
     return -coefficient * COULOMB_eV_nm / (epsilon * diameter / 2.0)
@@ -208,7 +225,7 @@ def polarisation_energy_eV(
     >>> float(polarisation_energy_eV(3.0, 2.0, 2.0))
     0.0
     """
-    diameter, inside, outside = _positive(
+    diameter, inside, outside = positive(
         diameter_nm=diameter_nm, dielectric=dielectric, dielectric_outside=dielectric_outside
     )
     ratio = (inside / outside)[..., None]
@@ -302,113 +319,6 @@ def two_band_gap_eV(
     return np.sqrt(gap**2 + 2.0 * np.abs(gap) * kinetic)
 
 
-def finite_barrier_energy_eV(
-    diameter_nm: ArrayLike,
-    mass_m0: ArrayLike,
-    barrier_eV: ArrayLike,
-    mass_outside_m0: ArrayLike = 1.0,
-) -> FloatArray:
-    """Return the ground-state energy of one carrier in a sphere with a finite barrier.
-
-    Solves x cot x = 1 - (m/m_out) (1 + sqrt(x0^2 m_out/m - x^2 m_out/m)) for the s state with
-    the boundary condition of BenDaniel and Duke (Phys. Rev. 152, 683 (1966)), where x = k R and
-    x0 belongs to the barrier. Where no state is bound the barrier itself is returned.
-
-    Parameters
-    ----------
-    diameter_nm : array-like
-        Diameter, nm, > 0.
-    mass_m0, mass_outside_m0 : array-like
-        Mass inside and outside, units of the free electron mass, > 0.
-    barrier_eV : array-like
-        Height of the barrier, eV, > 0.
-
-    Returns
-    -------
-    ndarray
-        Energy above the band edge, eV, between 0 and the barrier.
-
-    Raises
-    ------
-    PhysicsRangeError
-        If an input is not positive.
-
-    Examples
-    --------
-    >>> round(float(finite_barrier_energy_eV(4.0, 0.13, 1e6) / sphere_confinement_eV(4.0, 0.13)), 2)
-    1.0
-    """
-    diameter, mass, barrier, outside = np.broadcast_arrays(
-        *_positive(
-            diameter_nm=diameter_nm,
-            mass_m0=mass_m0,
-            barrier_eV=barrier_eV,
-            mass_outside_m0=mass_outside_m0,
-        )
-    )
-    radius = diameter / 2.0
-    limit = radius * np.sqrt(mass * barrier / KINETIC_eV_nm2)
-    low, high = np.full(limit.shape, 1e-9), np.minimum(limit, np.pi * (1.0 - 1e-12))
-    ratio = mass / outside
-    for _ in range(60):
-        middle = 0.5 * (low + high)
-        decay = (
-            radius
-            * np.sqrt(outside / KINETIC_eV_nm2 * barrier)
-            * np.sqrt(np.maximum(1.0 - (middle / limit) ** 2, 0.0))
-        )
-        below = middle / np.tan(middle) - 1.0 + ratio * (1.0 + decay) > 0.0
-        low, high = np.where(below, middle, low), np.where(below, high, middle)
-    energy: Any = KINETIC_eV_nm2 * (0.5 * (low + high) / radius) ** 2 / mass
-    return np.asarray(np.minimum(energy, barrier))
-
-
-def finite_barrier_gap_eV(
-    diameter_nm: ArrayLike,
-    gap_eV: ArrayLike,
-    electron_mass_m0: ArrayLike,
-    hole_mass_m0: ArrayLike,
-    dielectric: ArrayLike,
-    electron_barrier_eV: ArrayLike = 3.5,
-    hole_barrier_eV: ArrayLike = 3.5,
-) -> FloatArray:
-    """Return the effective-mass gap with finite barriers and the Coulomb term.
-
-    Parameters
-    ----------
-    diameter_nm : array-like
-        Diameter, nm, > 0.
-    gap_eV : array-like
-        Bulk gap, eV.
-    electron_mass_m0, hole_mass_m0 : array-like
-        Effective masses, units of the free electron mass, > 0.
-    dielectric : array-like
-        Dielectric constant of the crystal, > 0.
-    electron_barrier_eV, hole_barrier_eV : array-like, default 3.5
-        Barriers of the organic surroundings, eV; order of the offsets to common ligands
-        (common practice).
-
-    Returns
-    -------
-    ndarray
-        Gap of the particle, eV.
-
-    Raises
-    ------
-    PhysicsRangeError
-        If an input but the gap is not positive.
-
-    Examples
-    --------
-    >>> round(float(finite_barrier_gap_eV(1e4, 1.74, 0.13, 0.45, 9.6)), 3)
-    1.74
-    """
-    electron = finite_barrier_energy_eV(diameter_nm, electron_mass_m0, electron_barrier_eV)
-    hole = finite_barrier_energy_eV(diameter_nm, hole_mass_m0, hole_barrier_eV)
-    gap = np.asarray(gap_eV, dtype=np.float64)
-    return gap + electron + hole + coulomb_energy_eV(diameter_nm, dielectric)
-
-
 def surface_fraction(diameter_nm: ArrayLike, shell_nm: ArrayLike) -> FloatArray:
     """Return the share of a sphere's volume within one shell of its surface.
 
@@ -436,5 +346,5 @@ def surface_fraction(diameter_nm: ArrayLike, shell_nm: ArrayLike) -> FloatArray:
     >>> round(float(surface_fraction(2.0, 0.288)), 2)
     0.64
     """
-    diameter, shell = _positive(diameter_nm=diameter_nm, shell_nm=shell_nm)
+    diameter, shell = positive(diameter_nm=diameter_nm, shell_nm=shell_nm)
     return 1.0 - np.maximum(1.0 - 2.0 * shell / diameter, 0.0) ** 3

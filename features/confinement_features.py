@@ -13,12 +13,12 @@ from features.confinement import (
     brus_gap_eV,
     coulomb_energy_eV,
     exciton_bohr_radius_nm,
-    finite_barrier_gap_eV,
     reduced_mass,
     sphere_confinement_eV,
     surface_fraction,
     two_band_gap_eV,
 )
+from features.finite_barrier import finite_barrier_gap_eV
 
 __all__ = ["ConfinementFeatures"]
 

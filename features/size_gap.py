@@ -9,8 +9,8 @@ share one vote.
 import numpy as np
 import pandas as pd
 
-from features.confinement import finite_barrier_gap_eV
 from features.emission import stokes_shifts
+from features.finite_barrier import finite_barrier_gap_eV
 from features.semiconductors import bulk_constants
 from features.tables import read_table
 

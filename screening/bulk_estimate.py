@@ -43,7 +43,7 @@ QUANTITIES = ("electron_mass_m0", "hole_mass_m0", "dielectric")
 
 _NARROWEST_EV = 0.05
 _LEVEL = 0.9
-# Relative standard deviation of a constant on record, by how sure its transcription is.
+# Relative standard deviation of a constant on record, by how sure the copied figure is.
 _RECORD_LOG_SD = {"high": 0.05, "medium": 0.1, "low": 0.25}
 _COMPUTED_NOISE = 0.15
 _COLUMNS = (

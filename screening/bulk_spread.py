@@ -10,7 +10,7 @@ from collections.abc import Callable
 import numpy as np
 import pandas as pd
 
-from features.confinement import finite_barrier_gap_eV
+from features.finite_barrier import finite_barrier_gap_eV
 from screening.bulk_estimate import QUANTITIES
 from screening.covariance import FloatArray
 

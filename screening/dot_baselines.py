@@ -11,7 +11,8 @@ from sklearn.ensemble import HistGradientBoostingRegressor
 from sklearn.linear_model import LinearRegression
 from threadpoolctl import threadpool_limits
 
-from features.confinement import brus_gap_eV, finite_barrier_gap_eV, reduced_mass, two_band_gap_eV
+from features.confinement import brus_gap_eV, reduced_mass, two_band_gap_eV
+from features.finite_barrier import finite_barrier_gap_eV
 from screening.covariance import FloatArray
 
 __all__ = ["BASELINES"]

@@ -12,15 +12,19 @@ _ROWS = {
     "mean_absolute_error_eV, without low-confidence records": (
         "the same, low-confidence records out (eV)"
     ),
-    "error_expected_from_record_noise_eV": "error that the records' own noise leads to expect (eV)",
+    "error_expected_from_assigned_noise_eV": (
+        "error to expect from the noise assigned to the records (eV)"
+    ),
     "coverage_90": "share inside the 90 % interval",
     "mean_width_90_eV": "mean width of the 90 % interval (eV)",
     "mean_absolute_error_eV, Brus 1984": "error of the Brus formula (eV)",
+    "mean_absolute_error_eV, finite barrier": "error of finite barriers with Coulomb term (eV)",
     "mean_absolute_error_eV, two-band": "error of the two-band model (eV)",
     "mean_absolute_error_eV, nearest material's curve": (
         "error of the nearest material's curve (eV)"
     ),
     "mean_absolute_error_eV, linear size law": "error of a linear size law (eV)",
+    "mean_absolute_error_eV, plain boosted trees": "error of plain boosted trees (eV)",
 }
 
 

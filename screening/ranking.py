@@ -29,6 +29,8 @@ COLUMNS = (
     "optical_gap_low_eV",
     "optical_gap_high_eV",
     "emission_eV",
+    "emission_low_eV",
+    "emission_high_eV",
     "emission_nm",
     "fwhm_meV",
     "chance_in_window",

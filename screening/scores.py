@@ -46,7 +46,8 @@ def describe(model: SizeGapModel, candidates: pd.DataFrame, size_spread: float) 
     Returns
     -------
     pandas.DataFrame
-        The candidates plus optical_gap_eV with its 90 % ends, emission_eV, emission_nm, fwhm_meV,
+        The candidates plus optical_gap_eV and emission_eV with their 90 % ends (the emission's hold
+        the Stokes shift's uncertainty too, as its chance does), emission_nm, fwhm_meV,
         slope_eV_per_nm, size_sd_eV, model_sd_eV, stokes_sd_eV, record_state.
     """
     frame = candidates.join(model.predict(candidates))
@@ -57,6 +58,11 @@ def describe(model: SizeGapModel, candidates: pd.DataFrame, size_spread: float) 
     frame["emission_eV"] = frame["optical_gap_eV"] - stokes["stokes_shift_eV"]
     frame["emission_nm"] = wavelength_nm(frame["emission_eV"])
     frame["stokes_sd_eV"] = stokes["stokes_sd_eV"]
+    emitting = frame.assign(
+        optical_gap_eV=frame["emission_eV"],
+        model_sd_eV=np.hypot(frame["model_sd_eV"], frame["stokes_sd_eV"]),
+    )
+    frame["emission_low_eV"], frame["emission_high_eV"] = model.interval(emitting, _LEVEL)
     frame["slope_eV_per_nm"] = _slope(model, candidates)
     frame["size_sd_eV"] = frame["slope_eV_per_nm"].abs() * size_spread * frame["diameter_nm"]
     frame["fwhm_meV"] = 1000.0 * ensemble_fwhm_eV(

@@ -16,12 +16,13 @@ from matplotlib.figure import Figure
 if TYPE_CHECKING:
     from screening.ranking import RankResult
 
-__all__ = ["curve_numbers", "draw_intervals", "draw_map", "figure_svg", "new_axes"]
+__all__ = ["MOST_LINES", "curve_numbers", "draw_intervals", "draw_map", "figure_svg", "new_axes"]
 
 _COLOURS = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#E69F00", "#56B4E9")
 _STYLES = ("-", "--", "-.", ":")
 _MARKS = ("o", "s", "^", "D", "v", "P")
-_MOST_LINES = 6
+MOST_LINES = 6
+"""Most materials on the map."""
 _LONGEST_NAME = 24
 
 
@@ -36,9 +37,15 @@ def _quantity(result: "RankResult") -> tuple[str, str]:
     return "optical_gap_eV", "Optical gap (eV)"
 
 
+def _end(column: str, end: str) -> str:
+    """Return the column of an interval's end, for instance emission_low_eV."""
+    return f"{column.removesuffix('_eV')}_{end}_eV"
+
+
 def _clipped(name: str) -> str:
-    """Keep a long name from pushing the axes off the figure."""
-    return name if len(name) <= _LONGEST_NAME else f"{name[:_LONGEST_NAME]}…"
+    """Keep a long name on the figure, and a dollar sign from starting a formula."""
+    short = name if len(name) <= _LONGEST_NAME else f"{name[:_LONGEST_NAME]}…"
+    return short.replace("$", r"\$")
 
 
 def draw_map(result: "RankResult", ax: Any = None) -> Any:
@@ -57,7 +64,7 @@ def draw_map(result: "RankResult", ax: Any = None) -> Any:
     column, label = _quantity(result)
     low, high = result.specification.target.energies_eV
     ax.axhspan(low, high, color="0.75", label="window", zorder=0)
-    materials = result.shortlist["material"].drop_duplicates().head(_MOST_LINES)
+    materials = result.shortlist["material"].drop_duplicates().head(MOST_LINES)
     for position, material in enumerate(materials):
         _draw_material(ax, result, material, position, column)
     ax.set_xlabel("Core diameter (nm)")
@@ -72,7 +79,6 @@ def _draw_material(
 ) -> None:
     colour = _COLOURS[position % len(_COLOURS)]
     curve = result.scored[result.scored["material"].eq(material)]
-    shift = (curve["optical_gap_eV"] - curve[column]).to_numpy()
     ax.plot(
         curve["diameter_nm"],
         curve[column],
@@ -82,22 +88,24 @@ def _draw_material(
     )
     ax.fill_between(
         curve["diameter_nm"],
-        curve["optical_gap_low_eV"] - shift,
-        curve["optical_gap_high_eV"] - shift,
+        curve[_end(column, "low")],
+        curve[_end(column, "high")],
         color=colour,
         alpha=0.12,
         linewidth=0,
     )
     records = result.model.rows_[result.model.rows_["material"].eq(material)]
-    offset = float(shift[0]) if len(shift) else 0.0
-    ax.plot(
-        records["diameter_nm"],
-        records["optical_gap_eV"] - offset,
-        _MARKS[position % len(_MARKS)],
-        color=colour,
-        markersize=3,
-        alpha=0.6,
-    )
+    offset = float((curve["optical_gap_eV"] - curve[column]).iloc[0])
+    measured = records["record_kind"].eq("measured point")
+    for rows, mark in ((measured, _MARKS[position % len(_MARKS)]), (~measured, "|")):
+        ax.plot(
+            records.loc[rows, "diameter_nm"],
+            records.loc[rows, "optical_gap_eV"] - offset,
+            mark,
+            color=colour,
+            markersize=3 if mark != "|" else 5,
+            alpha=0.6,
+        )
     chosen = result.shortlist[result.shortlist["material"].eq(material)]
     ax.plot(
         chosen["diameter_nm"],
@@ -110,7 +118,7 @@ def _draw_material(
 
 
 def draw_intervals(result: "RankResult", ax: Any = None) -> Any:
-    """Draw the 90 % interval of the gap of every listed candidate against the window.
+    """Draw the 90 % interval of the target quantity of every listed candidate against the window.
 
     Parameters
     ----------
@@ -124,8 +132,7 @@ def draw_intervals(result: "RankResult", ax: Any = None) -> Any:
     listed = result.shortlist
     ax = new_axes(7.2, 1.2 + 0.3 * len(listed)) if ax is None else ax
     column, label = _quantity(result)
-    shift = listed["optical_gap_eV"] - listed[column]
-    ends = [listed[f"optical_gap_{end}_eV"] - shift for end in ("low", "high")]
+    ends = [listed[_end(column, end)] for end in ("low", "high")]
     low, high = result.specification.target.energies_eV
     ax.axvspan(low, high, color="0.75", label="window", zorder=0)
     place = np.arange(len(listed))[::-1]
@@ -142,7 +149,7 @@ def draw_intervals(result: "RankResult", ax: Any = None) -> Any:
         )
     ]
     ax.set_yticks(place, names)
-    ax.set_xlabel(f"{label}, 90 % interval of the gap")
+    ax.set_xlabel(f"{label}, 90 % interval")
     ax.legend(fontsize=8)
     return ax
 
@@ -176,12 +183,20 @@ def figure_svg(ax: Any, title: str, description: str, key: str) -> str:
         f'<title id="{key}-title">{escape(title)}</title>'
         f'<desc id="{key}-text">{escape(description)}</desc>'
     )
-    return opening + ' stroke-linejoin="round"' + names + _as_attributes(body)
+    return opening + ' stroke-linejoin="round"' + names + _own_ids(_as_attributes(body), key)
+
+
+def _own_ids(svg: str, key: str) -> str:
+    """Keep the identifiers of two figures on one page apart."""
+    return re.sub(r'(\bid="|href="#|url\(#)', rf"\g<1>{key}-", svg)
 
 
 def _as_attributes(svg: str) -> str:
-    """Turn style declarations into attributes, which a strict content-security policy allows."""
-    plain = re.sub(r"<style.*?</style>", "", svg, flags=re.DOTALL)
+    """Turn style declarations into attributes, which a strict content-security policy allows.
+
+    Comments go as well: the drawing library copies names into them as they are.
+    """
+    plain = re.sub(r"<style.*?</style>|<!--.*?-->", "", svg, flags=re.DOTALL)
 
     def declared(match: re.Match[str]) -> str:
         pairs = [part.split(":", 1) for part in match[1].split(";") if ":" in part]
@@ -192,8 +207,12 @@ def _as_attributes(svg: str) -> str:
 
 def curve_numbers(result: "RankResult") -> pd.DataFrame:
     """Return the numbers behind the map, thinned to every tenth diameter."""
-    listed = result.shortlist["material"].drop_duplicates().head(_MOST_LINES)
+    listed = result.shortlist["material"].drop_duplicates().head(MOST_LINES)
     rows = result.scored[result.scored["material"].isin(listed)]
     thinned = rows.groupby("material", sort=False).nth(list(range(0, 10_000, 10)))
-    columns = ["material", "diameter_nm", "optical_gap_eV", "optical_gap_low_eV"]
-    return pd.DataFrame(thinned[[*columns, "optical_gap_high_eV", "emission_eV"]])
+    column = _quantity(result)[0]
+    ends = [_end(column, "low"), _end(column, "high")]
+    numbers = thinned[["material", "diameter_nm", column, *ends]]
+    return pd.DataFrame(
+        numbers.to_numpy(), columns=["material", "diameter_nm", "centre", "low", "high"]
+    )

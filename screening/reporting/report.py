@@ -3,6 +3,7 @@
 import base64
 import hashlib
 import json
+import unicodedata
 from collections.abc import Mapping
 from importlib.resources import files
 from typing import Any
@@ -13,7 +14,13 @@ from markupsafe import Markup
 
 from features.tables import read_table
 from screening.ranking import RankResult
-from screening.reporting.figures import curve_numbers, draw_intervals, draw_map, figure_svg
+from screening.reporting.figures import (
+    MOST_LINES,
+    curve_numbers,
+    draw_intervals,
+    draw_map,
+    figure_svg,
+)
 from screening.reporting.swatch import emission_colour
 
 __all__ = ["render_report"]
@@ -77,18 +84,20 @@ def render_report(result: RankResult, manifest: Mapping[str, Any], evidence: pd.
 
 
 def _short(text: object) -> str:
-    cell = str(text)
+    """Cut a cell and drop characters that only steer the direction or join of others."""
+    cell = "".join(mark for mark in str(text) if unicodedata.category(mark) != "Cf")
     return cell if len(cell) <= _LONGEST_CELL else f"{cell[:_LONGEST_CELL]}…"
 
 
 def _verdict(result: RankResult) -> str:
     listed = result.shortlist.head(3)
     names = ", ".join(
-        f"{m} at {d:.2f} nm" for m, d in zip(listed["material"], listed["diameter_nm"], strict=True)
+        f"{_short(m)} at {d:.2f} nm"
+        for m, d in zip(listed["material"], listed["diameter_nm"], strict=True)
     )
     best = listed.iloc[0]
     reason = (
-        f"{best['material']} has the highest chance of a batch inside the window "
+        f"{_short(best['material'])} has the highest chance of a batch inside the window "
         f"({best['chance_in_window']:.0%}); it is a material "
         + (
             "with size data on record."
@@ -129,9 +138,18 @@ def _map_svg(result: RankResult) -> str:
 def _map_caption(result: RankResult) -> str:
     best = result.shortlist.iloc[0]
     return (
-        f"{best['material']} crosses the window at {best['diameter_nm']:.2f} nm; the diameter may "
-        f"drift by {best['size_tolerance_nm']:.2f} nm before the predicted centre leaves it."
+        f"{_short(best['material'])} crosses the window at {best['diameter_nm']:.2f} nm; "
+        f"the diameter may drift by {best['size_tolerance_nm']:.2f} nm before the predicted centre leaves it. "
+        f"{_drawn(result)} Filled marks are measured points, upright ticks are samples of "
+        "published curves (one experiment a curve, not one a tick)."
     )
+
+
+def _drawn(result: RankResult) -> str:
+    """Say how many of the listed materials the map shows."""
+    n_listed = result.shortlist["material"].nunique()
+    n_drawn = min(MOST_LINES, n_listed)
+    return f"{n_drawn} of {n_listed} listed materials are drawn, best first."
 
 
 def _interval_svg(result: RankResult) -> str:
@@ -145,8 +163,9 @@ def _interval_svg(result: RankResult) -> str:
 
 def _interval_caption(result: RankResult) -> str:
     listed = result.shortlist
+    name = result.specification.target.quantity
     width = (
-        (listed["optical_gap_high_eV"] - listed["optical_gap_low_eV"])
+        (listed[f"{name}_high_eV"] - listed[f"{name}_low_eV"])
         .groupby(listed["record_state"])
         .mean()
     )
@@ -173,36 +192,41 @@ def _changes(result: RankResult) -> list[str]:
         )
     tight = listed.iloc[int(listed["size_tolerance_nm"].to_numpy().argmin())]
     notes.append(
-        f"{tight['material']} needs the tightest size control "
+        f"{_short(tight['material'])} needs the tightest size control "
         f"({tight['size_tolerance_nm']:.2f} nm); a mean diameter that is off by more moves it out."
     )
     new = listed[listed["record_state"].eq("new")]["material"].tolist()
     if new:
         notes.append(
-            f"One measured sample each of {', '.join(new)} would replace an interval taken from "
-            "other materials by one of its own."
+            f"One measured sample each of {', '.join(map(_short, new))} would replace an "
+            "interval taken from other materials by one of its own."
         )
     return notes
 
 
 def _sources(result: RankResult) -> list[dict[str, Any]]:
-    """Cite the records and bulk constants behind the listed materials."""
-    materials = set(result.shortlist["material"])
-    records = read_table("size_gap_records")
+    """Cite what stands behind the listed materials, and say whose figures were recalled."""
+    materials = result.shortlist["material"].unique().tolist()
     bulk = read_table("bulk_semiconductors")
-    used = pd.concat(
-        [t.loc[t["material"].isin(materials), ["source", "material"]] for t in (records, bulk)]
+    stokes = read_table("stokes_shifts").set_index("name")
+    families = result.scored.drop_duplicates("material").set_index("material")["family"]
+    shifts = pd.DataFrame(
+        {"material": m, **stokes.loc[m if m in stokes.index else families[m]]} for m in materials
     )
-    by_source = used.groupby("source")["material"].agg(lambda names: ", ".join(sorted(set(names))))
-    table = read_table("sources").set_index("source").loc[by_source.index]
-    return [
-        {
-            "source": source,
-            "materials": names,
-            "citation": citation,
-            "recalled": read_in == "from memory",
-        }
-        for source, names, citation, read_in in zip(
-            by_source.index, by_source, table["citation"], table["read_in"], strict=True
+    columns = ["source", "material", "from_memory"]
+    used = pd.concat(
+        [t.loc[t["material"].isin(materials), columns] for t in (result.model.rows_, bulk, shifts)]
+    )
+    citations = read_table("sources").set_index("source")["citation"]
+    rows = []
+    for source, part in used.groupby("source", sort=True):
+        recalled = int(part["from_memory"].astype(bool).sum())
+        rows.append(
+            {
+                "source": source,
+                "materials": ", ".join(sorted(set(part["material"]))),
+                "citation": citations.get(source, "a table of the user's own"),
+                "recalled": f"{recalled} of {len(part)} figures" if recalled else "",
+            }
         )
-    ]
+    return rows

@@ -11,8 +11,6 @@ from features.confinement import (
     brus_gap_eV,
     coulomb_energy_eV,
     exciton_bohr_radius_nm,
-    finite_barrier_energy_eV,
-    finite_barrier_gap_eV,
     polarisation_energy_eV,
     reduced_mass,
     sphere_confinement_eV,
@@ -20,6 +18,7 @@ from features.confinement import (
     two_band_gap_eV,
 )
 from features.errors import PhysicsRangeError
+from features.finite_barrier import finite_barrier_energy_eV, finite_barrier_gap_eV
 
 masses = st.floats(0.02, 2.0)
 gaps = st.floats(0.1, 5.0)

@@ -130,3 +130,13 @@ def test_an_indirect_gap_is_told_beside_the_cautions():
     silicon, selenide = caution_column(pd.Series(["Si", "CdSe"]))
     assert silicon.startswith("indirect bulk gap")
     assert "indirect" not in selenide
+
+
+def test_the_emission_interval_holds_the_spread_behind_its_chance(model):
+    # A window equal to the 90 % interval must have a chance of 90 %: bars and chances agree.
+    described = describe(model, GRID, 0.06)
+    row = described[described["material"].eq("CdSe")].iloc[[4]]
+    window = Window("emission", row["emission_low_eV"].item(), row["emission_high_eV"].item())
+    assert score(model, row, window)["chance_in_window"].item() == pytest.approx(0.9, abs=1e-9)
+    gap_width = row["optical_gap_high_eV"] - row["optical_gap_low_eV"]
+    assert (row["emission_high_eV"] - row["emission_low_eV"] > gap_width).all()

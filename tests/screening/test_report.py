@@ -6,7 +6,7 @@ from html.parser import HTMLParser
 import pandas as pd
 import pytest
 
-from features.tables import packaged_path
+from features.tables import packaged_path, read_table
 from screening.ranking import RankResult, rank
 from screening.reporting.report import render_report
 from screening.reporting.swatch import chromaticity, emission_colour
@@ -116,7 +116,14 @@ def test_without_evidence_the_page_says_so_and_invents_nothing(result, evidence)
 
 @pytest.mark.parametrize(
     "name",
-    ["<script>alert(1)</script>", "=cmd()", "\u202eevil", "x" * 10_000, '"><img src=x onerror=y>'],
+    [
+        "<script>alert(1)</script>",
+        "=cmd()",
+        "\u202eevil",
+        "x" * 10_000,
+        r"$\\frac{$",
+        '"><img src=x onerror=y>',
+    ],
 )
 def test_a_hostile_name_does_no_harm(result, evidence, name):
     def renamed(frame):
@@ -152,3 +159,29 @@ def test_colours_outside_the_visible_are_not_invented():
     red, green, blue = (int(emission_colour(1.97, 0.08)[i : i + 2], 16) for i in (1, 3, 5))
     assert red > green
     assert red > blue
+
+
+def test_no_two_elements_share_an_identifier(page):
+    names = [a["id"] for _, a in tags(page) if "id" in a]
+    assert len(names) == len(set(names))
+
+
+def test_a_source_says_how_many_of_its_figures_were_recalled(page, result):
+    rows = result.model.rows_
+    bulk = read_table("bulk_semiconductors")
+    listed = set(result.shortlist["material"])
+    handbook = bulk[bulk["source"].eq("handbook") & bulk["material"].isin(listed)]
+    assert handbook["from_memory"].all()
+    assert rows["from_memory"].any()
+    assert f"{len(handbook)} of {len(handbook)} figures recalled" in page
+
+
+def test_direction_marks_do_not_reach_the_page(result, evidence):
+    named = RankResult(
+        result.specification,
+        result.shortlist.replace({"material": {"CdSe": "Cd\u202eSe"}}),
+        result.scored.replace({"material": {"CdSe": "Cd\u202eSe"}}),
+        result.rejected,
+        result.model,
+    )
+    assert "\u202e" not in render_report(named, {"warnings": []}, evidence)
