@@ -140,7 +140,8 @@ def _map_caption(result: RankResult) -> str:
     return (
         f"{_short(best['material'])} crosses the window at {best['diameter_nm']:.2f} nm; "
         f"the diameter may drift by {best['size_tolerance_nm']:.2f} nm before the predicted "
-        f"centre leaves it. {_drawn(result)} Filled marks are measured points, upright ticks are samples of "
+        "centre leaves it. "
+        f"{_drawn(result)} Filled marks are measured points, upright ticks are samples of "
         "published curves (one experiment a curve, not one a tick)."
     )
 
