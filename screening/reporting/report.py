@@ -225,7 +225,7 @@ def _sources(result: RankResult) -> list[dict[str, Any]]:
         rows.append(
             {
                 "source": source,
-                "materials": ", ".join(sorted(set(part["material"]))),
+                "materials": ", ".join(map(_short, sorted(set(part["material"])))),
                 "citation": citations.get(source, "a table of the user's own"),
                 "recalled": f"{recalled} of {len(part)} figures" if recalled else "",
             }
