@@ -23,12 +23,14 @@ __all__ = [
     "needed_size_spread",
     "normal_sizes",
     "room_for_share",
+    "spread_for_share",
 ]
 
 FloatArray = NDArray[np.float64]
 
 _NODES = np.linspace(-6.0, 6.0, 241)
 _BISECTIONS = 60
+_MOST_SIZES = 400
 
 
 @dataclass(frozen=True)
@@ -96,6 +98,7 @@ def measured_sizes(diameter_nm: ArrayLike, count: ArrayLike | None = None) -> Si
     Returns
     -------
     SizeShape
+        More than 400 sizes are gathered into 400 bins.
 
     Raises
     ------
@@ -121,7 +124,18 @@ def measured_sizes(diameter_nm: ArrayLike, count: ArrayLike | None = None) -> Si
             explain("too few sizes", expected="at least two different diameters with a count")
         )
     weight = weight[used] / weight[used].sum()
-    return SizeShape(diameter[used] / (weight @ diameter[used]), weight)
+    ratio = diameter[used] / (weight @ diameter[used])
+    return SizeShape(ratio, weight) if len(ratio) <= _MOST_SIZES else _binned(ratio, weight)
+
+
+def _binned(ratio: FloatArray, weight: FloatArray) -> SizeShape:
+    """Gather many sizes into narrow bins, each at its own mean."""
+    edges = np.linspace(ratio.min(), ratio.max(), _MOST_SIZES + 1)
+    place = np.clip(np.searchsorted(edges, ratio, side="right") - 1, 0, _MOST_SIZES - 1)
+    share = np.bincount(place, weight, minlength=_MOST_SIZES)
+    filled = share > 0.0
+    mean = np.bincount(place, weight * ratio, minlength=_MOST_SIZES)[filled] / share[filled]
+    return SizeShape(mean, share[filled].astype(np.float64))
 
 
 def fraction_inside(
@@ -266,3 +280,42 @@ def needed_size_spread(
     per_spread = FWHM_PER_SD * np.abs(np.asarray(slope_eV, dtype=np.float64))
     with np.errstate(invalid="ignore", divide="ignore"):
         return np.asarray(np.where(left >= 0.0, np.sqrt(left) / per_spread, np.nan))
+
+
+def spread_for_share(half_window_eV: ArrayLike, slope_eV: ArrayLike, share: float) -> FloatArray:
+    """Return the largest size spread at which a centred batch holds a share inside.
+
+    Solves 2 Phi(h / s) - 1 = share for the standard deviation of the energies.
+
+    Parameters
+    ----------
+    half_window_eV : array-like
+        Half the width of the window, eV, > 0.
+    slope_eV : array-like
+        Diameter times the derivative of the energy to the diameter, eV.
+    share : float
+        Share of particles wanted inside, above 0, below 1.
+
+    Returns
+    -------
+    ndarray
+        Standard deviation of the diameter over its mean; infinite where the energy does not depend
+        on the size.
+
+    Raises
+    ------
+    PhysicsRangeError
+        If the share is out of range.
+
+    Examples
+    --------
+    >>> round(float(spread_for_share(0.05, -0.8, 0.5)), 4)
+    0.0927
+    """
+    if not 0.0 < share < 1.0:
+        raise PhysicsRangeError(
+            explain("share out of range", expected="above 0, below 1", found=f"{share}")
+        )
+    sd = np.asarray(half_window_eV, dtype=np.float64) / ndtri(0.5 * (1.0 + share))
+    with np.errstate(divide="ignore"):
+        return np.asarray(sd / np.abs(np.asarray(slope_eV, dtype=np.float64)))

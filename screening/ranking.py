@@ -10,9 +10,12 @@ from features.errors import NothingQualifiesError, explain
 from features.formula import parse_formula
 from features.hazards import caution_text
 from features.semiconductors import has_indirect_gap
+from features.size_control import needed_size_spread, spread_for_share
 from screening.candidates import candidate_grid, choose_materials
 from screening.dots import ON_RECORD, SizeGapModel
+from screening.limits import REJECTED, judge
 from screening.scores import Window, describe, score
+from screening.trade_offs import add_supply
 
 if TYPE_CHECKING:
     from screening.specification import Specification
@@ -36,8 +39,15 @@ COLUMNS = (
     "chance_in_window",
     "fraction_in_window",
     "size_tolerance_nm",
+    "batch_yield",
+    "size_spread_needed",
     "record_state",
+    "limits",
+    "hazard_class",
+    "supply_class",
+    "is_unbeaten",
     "nearest_source",
+    "supply",
     "cautions",
 )
 """Columns of the shortlist, in order."""
@@ -57,7 +67,7 @@ class RankResult:
     scored : pandas.DataFrame
         Every candidate with its scores.
     rejected : pandas.DataFrame
-        Columns material, reason.
+        Columns `screening.limits.REJECTED`.
     model : SizeGapModel
     """
 
@@ -120,22 +130,43 @@ def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
     low, high = specification.target.energies_eV
     window = Window(specification.target.quantity, low, high)
     grid = candidate_grid(materials, wanted)
-    described = describe(model, grid, specification.laboratory.size_spread)
-    scored = score(model, described, window)
-    best = _shortlist(scored, specification)
-    missed = _missed(scored, specification)
+    sizes = specification.laboratory.size_shape()
+    described = describe(model, grid, sizes)
+    scored = score(model, described, window, sizes, specification.laboratory.least_fraction)
+    scored["size_spread_needed"] = _spread_needed(scored, specification)
+    judgement = judge(scored, specification.limits)
+    allowed = scored[judgement.allowed]
+    best = _shortlist(allowed, specification)
+    missed = _missed(allowed, specification)
+    turned_down = judgement.rejected(scored)
     if best.empty:
-        raise NothingQualifiesError(_nothing(scored, specification))
+        raise NothingQualifiesError(_nothing(scored, turned_down, specification))
+    best["limits"] = judgement.notes(scored.index.get_indexer(best.index).tolist())
     best.insert(0, "rank", np.arange(1, len(best) + 1))
     best["nearest_source"] = nearest_records(best, model)
     best["cautions"] = caution_column(best["material"])
+    best = add_supply(best)
+    rejected = pd.concat([refused, turned_down, missed], ignore_index=True)
     return RankResult(
         specification,
         best[list(COLUMNS)].reset_index(drop=True),
         scored,
-        pd.concat([refused, missed], ignore_index=True),
+        rejected.reindex(columns=list(REJECTED)),
         model,
     )
+
+
+def _spread_needed(scored: pd.DataFrame, specification: "Specification") -> pd.Series:
+    """Return the size spread at which a centred batch is good and meets the linewidth asked."""
+    low, high = specification.target.energies_eV
+    slope = scored["slope_eV_per_nm"] * scored["diameter_nm"]
+    share = specification.laboratory.least_fraction
+    needed = spread_for_share(0.5 * (high - low), slope, share)
+    limit_meV = specification.limits.highest_fwhm_meV
+    if limit_meV is not None:
+        width = needed_size_spread(limit_meV / 1000.0, scored["single_dot_fwhm_eV"], slope)
+        needed = np.fmin(needed, np.nan_to_num(width))
+    return pd.Series(needed, index=scored.index)
 
 
 def _ordered(scored: pd.DataFrame) -> pd.DataFrame:
@@ -173,10 +204,16 @@ def _missed(scored: pd.DataFrame, specification: "Specification") -> pd.DataFram
     best = scored.groupby("material", sort=True)["chance_in_window"].max()
     short = best[best < max(least, 1e-12)]
     reasons = [f"best chance {value:.2g} is below {least:g}" for value in short]
-    return pd.DataFrame({"material": short.index, "reason": reasons})
+    limit = "shortlist.least_chance"
+    table = {"material": short.index, "reason": reasons, "limit": limit, "verdict": "fail"}
+    return pd.DataFrame(table | {"chance_in_window": short.to_numpy()})
 
 
-def _nothing(scored: pd.DataFrame, specification: "Specification") -> str:
+def _nothing(
+    scored: pd.DataFrame, turned_down: pd.DataFrame, specification: "Specification"
+) -> str:
+    if not turned_down.empty:
+        return _all_turned_down(turned_down)
     best = scored.iloc[int(np.argmax(scored["chance_in_window"]))]
     return explain(
         "no candidate qualifies",
@@ -185,6 +222,19 @@ def _nothing(scored: pd.DataFrame, specification: "Specification") -> str:
         found=f"at best {best['chance_in_window']:.3g} ({best['material']}, "
         f"{best['diameter_nm']:g} nm)",
         do="widen the window, allow more materials or lower least_chance",
+    )
+
+
+def _all_turned_down(turned_down: pd.DataFrame) -> str:
+    worst = turned_down["limit"].value_counts()
+    best = turned_down.iloc[int(turned_down["chance_in_window"].to_numpy().argmax())]
+    counts = ", ".join(f"{name} {count} materials" for name, count in worst.items())
+    return explain(
+        "no candidate qualifies",
+        where="limits",
+        found=f"{counts}; the best of them, {best['material']} at {best['diameter_nm']:g} nm "
+        f"(chance {best['chance_in_window']:.2g}): {best['reason']}",
+        do="loosen a limit, or allow more materials",
     )
 
 

@@ -14,6 +14,7 @@ from features.size_control import (
     needed_size_spread,
     normal_sizes,
     room_for_share,
+    spread_for_share,
 )
 
 
@@ -111,7 +112,21 @@ def test_one_size_is_no_distribution():
         measured_sizes([4.0, 4.0])
 
 
+@given(half=st.floats(0.005, 0.5), slope=st.floats(-2.0, -0.05), share=st.floats(0.05, 0.95))
+def test_at_the_spread_for_a_share_a_centred_batch_just_holds_it(half, slope, share):
+    spread = float(spread_for_share(half, slope, share))
+    assert float(fraction_inside(-half, half, 0.0, abs(slope) * spread)) == pytest.approx(share)
+
+
 @pytest.mark.parametrize("share", [0.0, 1.0, -1.0])
 def test_a_share_out_of_range_is_refused(share):
     with pytest.raises(PhysicsRangeError, match="share out of range"):
         room_for_share(0.05, 0.02, share)
+
+
+def test_many_sizes_gathered_in_bins_keep_mean_and_spread():
+    drawn = np.random.default_rng(1).lognormal(1.4, 0.1, 5000)
+    shape = measured_sizes(drawn)
+    assert len(shape.ratio) <= 400
+    assert shape.weight @ shape.ratio == pytest.approx(1.0)
+    assert shape.spread == pytest.approx(drawn.std() / drawn.mean(), rel=1e-3)
