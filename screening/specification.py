@@ -16,6 +16,7 @@ from features.errors import SpecificationError, explain
 from features.size_control import SizeShape, measured_sizes
 from features.size_gap import LARGEST_DIAMETER_nm, SMALLEST_DIAMETER_nm
 from screening.limit_rules import METAL_LIMITS, OPTICAL_LIMITS, Limits
+from screening.space_rules import Space
 from screening.strict_part import StrictPart
 from screening.user_tables import collect_faults, numeric_column, read_user_table
 
@@ -83,6 +84,9 @@ class Candidates(StrictPart):
         default_factory=list, max_length=10_000, description="formulas; empty for all in the tables"
     )
     families: list[str] = Field(default_factory=list, description="families; empty for all")
+    spaces: list[Space] = Field(
+        default_factory=list, max_length=50, description="compositions to enumerate"
+    )
     exclude_elements: list[Element] = Field(default_factory=list, description="element symbols")
     exclude_materials: list[str] = Field(
         default_factory=list, max_length=10_000, description="formulas left out"
