@@ -6,6 +6,7 @@ two by the error that they make there.
 """
 
 from collections.abc import Sequence
+from copy import copy
 from dataclasses import dataclass
 from typing import Any, Self
 
@@ -167,6 +168,27 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         self._weight = None if tree_weight is None else np.asarray(tree_weight, dtype=float)
         self.trees_ = self._fit_trees(np.arange(len(self._y)))
         return self
+
+    def conditioned(self, X: Any, y: Any, noise_sd: Any = None) -> "BlendedRegressor":
+        """Return a copy whose Gaussian process holds other rows; parameters and trees are kept.
+
+        Parameters
+        ----------
+        X : array-like of shape (n_rows, n_columns)
+        y : array-like of shape (n_rows,)
+        noise_sd : array-like of shape (n_rows,) or None, default None
+
+        Returns
+        -------
+        BlendedRegressor
+            For predictions; it cannot leave groups out.
+        """
+        check_is_fitted(self)
+        other = copy(self)
+        other.gaussian_ = GroupedGaussianProcess(
+            terms=self.terms, noise=self.noise, start=self.gaussian_.theta_.tolist(), max_iter=0
+        ).fit(X, y, noise_sd=noise_sd)
+        return other
 
     def predict(self, X: Any, return_std: bool = False) -> Any:
         """Predict the blended mean and, if wanted, its standard deviation without row noise."""

@@ -44,6 +44,7 @@ _TERMS = (
     CovarianceTerm("source and size", (3,), labels=(6,), amplitude=0.03),
     CovarianceTerm("shape", labels=(7,), scale=8, amplitude=0.2),
 )
+_N_SMOOTH = len(_CENTRES)
 _N_GAUSSIAN = 9
 _FEWEST_ROWS = 3
 
@@ -143,6 +144,31 @@ class SizeGapModel:
         }
         return self
 
+    def conditioned(self, more: pd.DataFrame) -> "SizeGapModel":
+        """Return the model with more rows, parameters, trees and calibration kept.
+
+        Parameters
+        ----------
+        more : pandas.DataFrame
+            As from ``screening.measurements.measured_rows``.
+
+        Returns
+        -------
+        SizeGapModel
+            Materials that come with the rows are *on record*, where the Gaussian process has the
+            weight that left-out size ranges gave it.
+        """
+        model = SizeGapModel(self.seed, self.n_folds)
+        model.rows_ = pd.concat([self.rows_, more], ignore_index=True)
+        model._label_codes()
+        X, mean, scale = model._columns(model.rows_, training=True)
+        model._target = (model.rows_["optical_gap_eV"].to_numpy() - mean) / scale
+        model._noise = model.rows_["noise_eV"].to_numpy() / scale
+        model._scale = scale
+        model.regressor_ = self.regressor_.conditioned(X, model._target, model._noise)
+        model.states_ = self.states_
+        return model
+
     def _learn_state(self, state: str, labels: Any) -> State:
         """Weigh and calibrate on the labelled rows, one vote a left-out group."""
         use = labels != ""
@@ -212,6 +238,33 @@ class SizeGapModel:
             index=candidates.index,
         )
 
+    def joint_covariance(self, candidates: pd.DataFrame) -> FloatArray:
+        """Return how the errors of candidates vary together, uncalibrated, in eV squared.
+
+        Parameters
+        ----------
+        candidates : pandas.DataFrame
+            As for `predict`.
+
+        Returns
+        -------
+        ndarray of shape (n_candidates, n_candidates)
+            Covariance of the Gaussian process; candidates of one material that has no records
+            share its unknown offset.
+        """
+        X, _, scale = self._columns(candidates, training=False)
+        labels = {
+            _N_SMOOTH: candidates["family"],
+            _N_SMOOTH + 1: candidates["material"],
+            _N_SMOOTH + 3: candidates["shape"] + " " + candidates["material"],
+        }
+        for column, names in labels.items():
+            unseen = X[:, column] < 0.0
+            # any numbers will do that no training row carries
+            X[unseen, column] = 10_000.0 + pd.factorize(names)[0][unseen]
+        covariance = self.regressor_.gaussian_.posterior_covariance(X)
+        return np.asarray(covariance * np.outer(scale, scale), dtype=np.float64)
+
     def interval(
         self, predicted: pd.DataFrame, level: float = 0.9
     ) -> tuple[FloatArray, FloatArray]:
@@ -266,8 +319,18 @@ class SizeGapModel:
         ]
         block = np.column_stack([*smooth, *[label.fillna(-1) for label in labels], features])
         mean = frame["gap_eV"].to_numpy() + features["finite_barrier_shift_eV"].to_numpy()
-        scale = 1.0 / np.maximum(frame["diameter_nm"].to_numpy(dtype=float), SMALLEST_DIAMETER_nm)
-        return block.astype(np.float64), mean, scale
+        return block.astype(np.float64), mean, self.scale_of(frame)
+
+    @staticmethod
+    def scale_of(frame: pd.DataFrame) -> FloatArray:
+        """Return the energy (eV) that one unit of the learned quantity stands for.
+
+        Returns
+        -------
+        ndarray of shape (n_rows,)
+        """
+        diameter = frame["diameter_nm"].to_numpy(dtype=np.float64)
+        return np.asarray(1.0 / np.maximum(diameter, SMALLEST_DIAMETER_nm))
 
 
 def _constants_spread_eV(candidates: pd.DataFrame) -> FloatArray:

@@ -135,6 +135,7 @@ def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
     scored = score(model, described, window, sizes, specification.laboratory.least_fraction)
     scored["size_spread_needed"] = _spread_needed(scored, specification)
     judgement = judge(scored, specification.limits)
+    scored["is_allowed"] = judgement.allowed
     allowed = scored[judgement.allowed]
     best = _shortlist(allowed, specification)
     missed = _missed(allowed, specification)

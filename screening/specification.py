@@ -16,6 +16,7 @@ from features.errors import SpecificationError, explain
 from features.size_control import SizeShape, measured_sizes
 from features.size_gap import LARGEST_DIAMETER_nm, SMALLEST_DIAMETER_nm
 from screening.limit_rules import METAL_LIMITS, OPTICAL_LIMITS, Limits
+from screening.plan_rules import Plan
 from screening.space_rules import Space
 from screening.strict_part import StrictPart
 from screening.user_tables import collect_faults, numeric_column, read_user_table
@@ -176,6 +177,7 @@ class Specification(StrictPart):
     candidates: Candidates = Candidates()
     laboratory: Laboratory = Laboratory()
     limits: Limits = Limits()
+    plan: Plan = Plan()
     shortlist: Shortlist = Shortlist()
     seed: int = Field(default=0, ge=0, le=2**31 - 1, description="seed of the trees")
 
