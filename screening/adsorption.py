@@ -173,6 +173,16 @@ class AdsorptionModel:
         shift, sd = self.sites_.shift(parts, adsorbate, coordination, close_packed_structure(first))
         return _site_frame(terrace, shift, sd, sites.index)
 
+    def calibration(self, state: str, adsorbate: str) -> GroupCalibration:
+        """Return the calibration behind a record state of `predict_surfaces`."""
+        if state in self.calibrations_:
+            return self.calibrations_[state]
+        name = family_of(adsorbate)
+        if name is None or state == "mixing rule":
+            return self.rule_.calibration_
+        family = self.families_[name]
+        return family.element_calibration_ if state == "new element" else family.calibration_
+
     def source_offsets(self) -> pd.DataFrame:
         """Return the fitted offset of every source and adsorbate: see `PureSurfaceModel`."""
         return self.pure_.source_offsets()

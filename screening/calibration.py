@@ -184,6 +184,13 @@ class GroupCalibration:
         beyond = size * (self._normal[-1] / self._z[-1])
         return np.asarray(np.sign(z) * np.where(size > self._z[-1], beyond, inside))
 
+    def model_score(self, normal: Any) -> FloatArray:
+        """Map a standard normal score to (value - mean) / sd: the inverse of `normal_score`."""
+        size = np.abs(np.asarray(normal, dtype=float))
+        inside = np.interp(size, self._normal, self._z)
+        beyond = size * (self._z[-1] / self._normal[-1])
+        return np.asarray(np.sign(normal) * np.where(size > self._normal[-1], beyond, inside))
+
     def cdf(self, value: Any, mean: Any, sd: Any) -> FloatArray:
         """Return the calibrated chance that the truth lies below a value.
 

@@ -9,17 +9,27 @@ from difflib import get_close_matches
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_validator
+from pydantic import (
+    BaseModel,
+    ConfigDict,
+    Discriminator,
+    Field,
+    Tag,
+    ValidationError,
+    model_validator,
+)
 
 from features.emission import HC_eV_nm
 from features.errors import SpecificationError, explain
 from features.size_gap import LARGEST_DIAMETER_nm, SMALLEST_DIAMETER_nm
+from screening.surface_target import SURFACE_QUANTITIES, SurfaceTarget, target_kind
 
 __all__ = [
     "Candidates",
     "Laboratory",
     "Shortlist",
     "Specification",
+    "SurfaceTarget",
     "Target",
     "load_specification",
     "parse_specification",
@@ -78,6 +88,15 @@ class Target(_Part):
         return HC_eV_nm / high, HC_eV_nm / low
 
 
+TargetChoice = Annotated[
+    Annotated[Target, Tag("emission")] | Annotated[SurfaceTarget, Tag("surface")],
+    Discriminator(target_kind),
+]
+"""Which of the two tracks a target belongs to is told by its keys."""
+
+_TARGETS: Mapping[Any, type[BaseModel]] = {"emission": Target, "surface": SurfaceTarget}
+
+
 class Candidates(_Part):
     """Which materials and diameters may be made."""
 
@@ -85,6 +104,9 @@ class Candidates(_Part):
         default_factory=list, max_length=10_000, description="formulas; empty for all in the tables"
     )
     families: list[str] = Field(default_factory=list, description="families; empty for all")
+    shapes: list[str] = Field(
+        default_factory=list, max_length=50, description="metal particles; empty for the usual one"
+    )
     exclude_elements: list[Element] = Field(default_factory=list, description="element symbols")
     diameter_nm: Pair = Field(
         default=[SMALLEST_DIAMETER_nm, 12.0], description="smallest and largest core diameter, nm"
@@ -97,10 +119,10 @@ class Candidates(_Part):
     @model_validator(mode="after")
     def _sizes(self) -> Self:
         low, high = self.diameter_nm
-        if not SMALLEST_DIAMETER_nm <= low <= high <= LARGEST_DIAMETER_nm:
+        if not 0.0 < low <= high <= LARGEST_DIAMETER_nm:
             raise ValueError(
-                f"diameter_nm out of range: expected {SMALLEST_DIAMETER_nm} <= low <= high <= "
-                f"{LARGEST_DIAMETER_nm} nm, where the model holds, found {self.diameter_nm}"
+                f"diameter_nm out of range: expected 0 < low <= high <= {LARGEST_DIAMETER_nm} nm, "
+                f"where the model holds, found {self.diameter_nm}"
             )
         if (high - low) / self.step_nm > _MOST_DIAMETERS:
             raise ValueError(f"step_nm is too fine: expected at most {_MOST_DIAMETERS} diameters")
@@ -132,18 +154,36 @@ class Specification(_Part):
     """One run."""
 
     title: str = Field(default="Untitled", min_length=1, max_length=200, description="heading")
-    target: Target
+    target: TargetChoice
     candidates: Candidates = Candidates()
     laboratory: Laboratory = Laboratory()
     shortlist: Shortlist = Shortlist()
     seed: int = Field(default=0, ge=0, le=2**31 - 1, description="seed of the trees")
+
+    @model_validator(mode="after")
+    def _of_one_track(self) -> Self:
+        """Refuse candidates that only the other track knows."""
+        wanted = self.candidates
+        if isinstance(self.target, SurfaceTarget):
+            if wanted.families:
+                raise ValueError("candidates.families is for quantum dots: name metals instead")
+        elif wanted.shapes:
+            raise ValueError("candidates.shapes is for metal particles: leave it out")
+        elif wanted.diameter_nm[0] < SMALLEST_DIAMETER_nm:
+            raise ValueError(
+                f"candidates.diameter_nm out of range: expected {SMALLEST_DIAMETER_nm} nm or more, "
+                f"where the model holds, found {wanted.diameter_nm}"
+            )
+        return self
 
 
 def _known_keys(location: tuple[Any, ...]) -> list[str]:
     """Return the keys that the table at a location knows."""
     fields: Mapping[str, Any] = Specification.model_fields
     for step in location[:-1]:
-        annotation = fields[step].annotation if step in fields else None
+        annotation = _TARGETS.get(step) or (fields[step].annotation if step in fields else None)
+        if step == "target":
+            continue
         if not (isinstance(annotation, type) and issubclass(annotation, BaseModel)):
             return []
         fields = annotation.model_fields
@@ -153,7 +193,7 @@ def _known_keys(location: tuple[Any, ...]) -> list[str]:
 def _message(error: Any, where: str) -> str:
     """Turn one validation error into what, where, expected, found, what to do."""
     location = tuple(error["loc"])
-    path = ".".join(str(step) for step in location) or "top level"
+    path = ".".join(str(step) for step in location if step not in _TARGETS) or "top level"
     place = f"{where}, {path}" if where else path
     if error["type"] == "extra_forbidden":
         known = _known_keys(location)
@@ -168,8 +208,10 @@ def _message(error: Any, where: str) -> str:
         return explain(f"missing key {location[-1]!r}", where=place, do="add it")
     if error["type"] == "value_error":
         return explain(str(error["ctx"]["error"]), where=place)
-    found = repr(error.get("input"))
-    return explain("wrong value", where=place, expected=error["msg"], found=found[:80])
+    found, expected = repr(error.get("input")), error["msg"]
+    if path == "target.quantity":
+        expected += f" for quantum dots, {' or '.join(map(repr, SURFACE_QUANTITIES))} for catalysts"
+    return explain("wrong value", where=place, expected=expected, found=found[:80])
 
 
 def parse_specification(data: Mapping[str, Any], where: str = "") -> Specification:
