@@ -126,6 +126,17 @@ class GroupCalibration:
         calibration._nodes()
         return calibration
 
+    def learned(self) -> dict[str, Any]:
+        """Return what was learned, as plain numbers for `restored`."""
+        factors = {str(level): value for level, value in self.factors_.items()}
+        return {"n_groups": self.n_groups_, "factors": factors}
+
+    @classmethod
+    def restored(cls, kept: Mapping[str, Any], state: str = "") -> Self:
+        """Rebuild a calibration from what `learned` returned."""
+        factors = {float(level): float(value) for level, value in kept["factors"].items()}
+        return cls.from_factors(factors, int(kept["n_groups"]), state)
+
     def _nodes(self) -> None:
         """Lay the map from the model's score to a standard normal score."""
         levels = sorted(self.factors_)

@@ -193,6 +193,7 @@ def _best_kind(
     inside = _by_kind(sites, sites.n_sites * chance)[1]
     best = np.argmax(inside + 1e-12 * n, axis=1)
     at = (np.arange(len(best)), best)
+    n = np.maximum(n, 1e-9)
 
     def mean(values: FloatArray) -> FloatArray:
         return np.asarray(_by_kind(sites, sites.n_sites * values)[1][at] / n[at])

@@ -10,12 +10,12 @@ from features.errors import NothingQualifiesError, explain
 from features.formula import parse_formula
 from features.hazards import caution_text
 from features.semiconductors import has_indirect_gap
-from screening.candidates import candidate_grid, choose_materials
 from screening.dots import ON_RECORD, SizeGapModel
-from screening.scores import Window, describe, score
+from screening.tracks import track_of
 
 if TYPE_CHECKING:
     from screening.specification import Specification
+    from screening.tracks import Track
 
 __all__ = ["COLUMNS", "RankResult", "caution_column", "nearest_records", "rank"]
 
@@ -40,7 +40,7 @@ COLUMNS = (
     "nearest_source",
     "cautions",
 )
-"""Columns of the shortlist, in order."""
+"""Columns of the shortlist of quantum dots, in order."""
 
 _INDIRECT = "indirect bulk gap, emission may be weak and broad; "
 
@@ -53,19 +53,24 @@ class RankResult:
     ----------
     specification : Specification
     shortlist : pandas.DataFrame
-        Columns `COLUMNS`, best first.
+        Columns of the track (`COLUMNS` for quantum dots), best first.
     scored : pandas.DataFrame
         Every candidate with its scores.
     rejected : pandas.DataFrame
         Columns material, reason.
-    model : SizeGapModel
+    model : SizeGapModel or AdsorptionModel
     """
 
     specification: "Specification"
     shortlist: pd.DataFrame
     scored: pd.DataFrame
     rejected: pd.DataFrame
-    model: SizeGapModel
+    model: Any
+
+    @property
+    def track(self) -> "Track":
+        """The track that the specification belongs to."""
+        return track_of(self.specification)
 
     def to_frame(self) -> pd.DataFrame:
         """Return a copy of the shortlist."""
@@ -77,7 +82,7 @@ class RankResult:
         return float(1.0 - np.prod(1.0 - chances))
 
     def plot(self, ax: Any = None) -> Any:
-        """Draw gap against size with the window and the shortlist.
+        """Draw the candidates against size.
 
         Parameters
         ----------
@@ -87,22 +92,20 @@ class RankResult:
         -------
         matplotlib.axes.Axes
         """
-        from screening.reporting.figures import draw_map  # noqa: PLC0415 - pyplot is slow to load
-
-        return draw_map(self, ax)
+        return self.track.draw(self, ax)
 
     def _repr_html_(self) -> str:
         return str(self.shortlist.to_html(index=False, escape=True, float_format="{:.3f}".format))
 
 
-def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
-    """Rank the candidates of a specification by their calibrated chance.
+def rank(specification: "Specification", model: Any) -> RankResult:
+    """Rank the candidates of a specification.
 
     Parameters
     ----------
     specification : Specification
-    model : SizeGapModel
-        Fitted and calibrated.
+    model : SizeGapModel or AdsorptionModel
+        Of the specification's track, fitted and calibrated.
 
     Returns
     -------
@@ -111,56 +114,50 @@ def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
     Raises
     ------
     SpecificationError
-        If a material or family is unknown.
+        If a material, family, shape or adsorbate is unknown.
     NothingQualifiesError
         If no candidate reaches the least chance.
     """
-    wanted = specification.candidates
-    materials, refused = choose_materials(wanted, model.rows_["material"])
-    low, high = specification.target.energies_eV
-    window = Window(specification.target.quantity, low, high)
-    grid = candidate_grid(materials, wanted)
-    described = describe(model, grid, specification.laboratory.size_spread)
-    scored = score(model, described, window)
-    best = _shortlist(scored, specification)
+    track = track_of(specification)
+    grid, refused = track.candidates(specification, model)
+    scored = track.score(specification, model, grid)
+    best = _shortlist(scored, specification, track)
     missed = _missed(scored, specification)
     if best.empty:
         raise NothingQualifiesError(_nothing(scored, specification))
     best.insert(0, "rank", np.arange(1, len(best) + 1))
-    best["nearest_source"] = nearest_records(best, model)
-    best["cautions"] = caution_column(best["material"])
+    best = track.finish(best, model)
     return RankResult(
         specification,
-        best[list(COLUMNS)].reset_index(drop=True),
+        best[list(track.columns)].reset_index(drop=True),
         scored,
         pd.concat([refused, missed], ignore_index=True),
         model,
     )
 
 
-def _ordered(scored: pd.DataFrame) -> pd.DataFrame:
-    """Sort by chance, then by tolerance, then by name and size, so that ties fall the same way."""
-    keyed = scored.assign(
-        _chance=scored["chance_in_window"].round(9), _room=scored["size_tolerance_nm"].round(9)
-    )
-    order = ["_chance", "_room", "material", "diameter_nm"]
-    ordered = keyed.sort_values(order, ascending=[False, False, True, True], kind="stable")
-    return ordered.drop(columns=["_chance", "_room"])
+def _ordered(scored: pd.DataFrame, track: "Track") -> pd.DataFrame:
+    """Sort by the track's keys, so that ties fall the same way."""
+    keys, rising = track.order(scored)
+    order = keys.sort_values(list(keys.columns), ascending=rising, kind="stable").index
+    return scored.loc[order]
 
 
-def _shortlist(scored: pd.DataFrame, specification: "Specification") -> pd.DataFrame:
-    """Take the best diameters of each material, apart by the stated spacing."""
+def _shortlist(
+    scored: pd.DataFrame, specification: "Specification", track: "Track"
+) -> pd.DataFrame:
+    """Take the best diameters of each material, of one shape apart by the stated spacing."""
     cut = specification.shortlist
-    ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)])
-    taken: dict[str, list[float]] = {}
+    ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)], track)
+    taken: dict[str, list[tuple[str, float]]] = {}
     rows = []
-    for index, material, diameter in zip(
-        ordered.index, ordered["material"], ordered["diameter_nm"], strict=True
+    for index, material, shape, diameter in zip(
+        ordered.index, ordered["material"], ordered["shape"], ordered["diameter_nm"], strict=True
     ):
-        sizes = taken.setdefault(material, [])
-        apart = all(abs(diameter - size) >= cut.spacing_nm for size in sizes)
-        if apart and len(sizes) < cut.per_material:
-            sizes.append(diameter)
+        own = taken.setdefault(material, [])
+        apart = all(abs(diameter - size) >= cut.spacing_nm for kind, size in own if kind == shape)
+        if apart and len(own) < cut.per_material:
+            own.append((shape, diameter))
             rows.append(index)
         if len(rows) == cut.length:
             break
