@@ -16,8 +16,8 @@ from scipy.special import ndtr
 
 from features.elements import element_table
 from features.formula import parse_formula
-from features.particle import particle_counts
 from features.particle_metal import MetalLattice, metal_lattice
+from features.particle_sites import resolved_counts
 from features.particle_steps import most_step_sites
 from screening.adsorption import AdsorptionModel
 from screening.covariance import FloatArray
@@ -108,9 +108,9 @@ def particle_sites(
         If the shape does not fit the metal or a size is out of range.
     """
     metal = metal_lattice(material)
-    counts = particle_counts(material, shape, diameter_nm)
+    counts = resolved_counts(material, shape, diameter_nm)
     names = tuple(site_name(c.site, c.facet, c.coordination) for c in counts.classes)
-    n_sites, coordination = counts.n_sites, np.nan_to_num(counts.generalised_coordination, nan=1.0)
+    n_sites, coordination = counts.n_sites, counts.generalised_coordination
     if is_step:
         names, n_sites = (_STEP_SITE,), most_step_sites(material, shape, diameter_nm)[:, None]
         coordination = np.full_like(n_sites, np.nan)
