@@ -186,8 +186,10 @@ def free_energy_correction(adsorbate: str) -> tuple[float, float]:
                 expected=f"one of {', '.join(table.index)}",
             )
         )
-    row = table.loc[adsorbate]
-    return float(row["correction_eV"]), float(row["correction_sd_eV"])
+    return (
+        float(table["correction_eV"].loc[adsorbate]),
+        float(table["correction_sd_eV"].loc[adsorbate]),
+    )
 
 
 def free_energy_eV(energy_eV: Any, adsorbate: str) -> FloatArray:

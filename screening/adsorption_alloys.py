@@ -63,7 +63,10 @@ def robust_gaussian(
         The enlarged noise of the rows.
     """
     first = GroupedGaussianProcess(
-        terms=terms, noise=_NOISE, start=None if start is None else start.tolist(), max_iter=max_iter
+        terms=terms,
+        noise=_NOISE,
+        start=None if start is None else start.tolist(),
+        max_iter=max_iter,
     )
     first.fit(X, z, noise_sd=noise)
     mean, sd = first.leave_group_out(np.arange(len(z)))

@@ -18,7 +18,14 @@ from features.tables import read_table
 from screening.covariance import CovarianceTerm, FloatArray
 from screening.gaussian import GroupedGaussianProcess
 
-__all__ = ["PURE_DESCRIPTORS", "PureSurfaceModel", "PureSurfaces", "facet_openness", "pure_rows", "surface_adsorbates"]
+__all__ = [
+    "PURE_DESCRIPTORS",
+    "PureSurfaceModel",
+    "PureSurfaces",
+    "facet_openness",
+    "pure_rows",
+    "surface_adsorbates",
+]
 
 PURE_DESCRIPTORS = (
     "d_band_centre_eV",

@@ -83,7 +83,7 @@ def _molar_mass_g(material: str) -> float:
 
 
 def _atom_area_m2(metal: MetalLattice) -> float:
-    return _ATOM_AREA[metal.structure] * (1e-9 * metal.nearest_distance_nm) ** 2
+    return float(_ATOM_AREA[metal.structure] * (1e-9 * metal.nearest_distance_nm) ** 2)
 
 
 def particle_sites(
@@ -154,11 +154,8 @@ def _descriptors(
     return _Descriptors(centre, slope_sd, own_sd, drawn + own_sd[:, :, None] * own)
 
 
-def _chance(
-    found: _Descriptors, level: SiteLevel, question: SurfaceQuestion
-) -> FloatArray:
-    """Return each site's chance: the metal's calibrated error, normal errors folded in closed form.
-    """
+def _chance(found: _Descriptors, level: SiteLevel, question: SurfaceQuestion) -> FloatArray:
+    """Return each site's chance: the metal's calibrated error, normal errors folded in closed form."""
     low, high = question.window_eV
     sd = np.hypot(np.hypot(found.slope_sd, found.own_sd), max(question.shared_sd_eV, 1e-6))
     mean = found.centre[:, :, None] + (level.error_eV - level.reference_error_eV)
@@ -174,7 +171,7 @@ def _quantiles(values: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
 def _activity(found: _Descriptors, sites: ParticleSites, question: SurfaceQuestion) -> FloatArray:
     """Return the draws of the summed relative volcano activity of a particle's sites."""
     per_site = 10.0 ** question.relative_activity_log10(found.draws)
-    return np.einsum("sc,scd->sd", sites.n_sites, per_site)
+    return np.asarray(np.einsum("sc,scd->sd", sites.n_sites, per_site))
 
 
 def _by_kind(sites: ParticleSites, weights: FloatArray) -> tuple[list[str], FloatArray]:

@@ -77,7 +77,7 @@ class CatalystTrack:
 
     def __init__(self, specification: "Specification") -> None:
         self.question = _question(specification)
-        self.columns = COLUMNS
+        self.columns: tuple[str, ...] = COLUMNS
         self.brief = {
             "rank": 0,
             "material": 0,

@@ -23,7 +23,7 @@ class EmissionTrack:
     """Quantum dots: see `screening.tracks.Track`."""
 
     def __init__(self) -> None:
-        self.columns = COLUMNS
+        self.columns: tuple[str, ...] = COLUMNS
         self.brief = {
             "rank": 0,
             "material": 0,

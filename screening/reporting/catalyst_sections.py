@@ -194,12 +194,15 @@ def _changes(result: RankResult) -> list[str]:
     listed = result.shortlist
     wide = (listed["adsorption_energy_high_eV"] - listed["adsorption_energy_low_eV"]).to_numpy()
     widest = listed.iloc[int(wide.argmax())]
-    notes = [
+    shared = (
         "All sites and sizes of one metal share the error of its surface: two sizes of one metal "
-        "are compared more surely than two metals.",
+        "are compared more surely than two metals."
+    )
+    doubt = (
         f"{short(widest['material'])} has the widest interval ({wide.max():.2f} eV): one measured "
-        "or computed adsorption energy of it would narrow the list most.",
-    ]
+        "or computed adsorption energy of it would narrow the list most."
+    )
+    notes = [shared, doubt]
     if len(listed) > 1:
         first, second = listed["chance_in_window"].iloc[0], listed["chance_in_window"].iloc[1]
         notes.append(

@@ -92,7 +92,8 @@ def _draw_atoms(ax: Any, positions: FloatArray, kinds: NDArray[np.str_]) -> None
     colours = [_shaded(SITE_STYLES[k][0], float(s)) for k, s in zip(kinds, shade, strict=True)]
     ax.add_collection(
         EllipseCollection(
-            *[np.ones(len(positions))] * 2,
+            np.ones(len(positions)),
+            np.ones(len(positions)),
             np.zeros(len(positions)),
             units="xy",
             offsets=positions[:, :2],
