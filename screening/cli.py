@@ -146,18 +146,8 @@ def rank(
 
 def _shortlist_text(result: Any) -> str:
     """Return the shortlist as a plain table."""
-    columns = ["rank", "material", "diameter_nm", "emission_nm", "fwhm_meV", "chance_in_window"]
-    columns += ["fraction_in_window", "size_tolerance_nm", "record_state"]
-    table = result.shortlist[columns].round(
-        {
-            "diameter_nm": 2,
-            "emission_nm": 0,
-            "fwhm_meV": 0,
-            "chance_in_window": 2,
-            "fraction_in_window": 2,
-            "size_tolerance_nm": 2,
-        }
-    )
+    digits = result.track.brief
+    table = result.shortlist[list(digits)].round(digits)
     return str(table.to_string(index=False))
 
 

@@ -10,15 +10,14 @@ from features.errors import NothingQualifiesError, explain
 from features.formula import parse_formula
 from features.hazards import caution_text
 from features.semiconductors import has_indirect_gap
-from features.size_control import needed_size_spread, spread_for_share
-from screening.candidates import candidate_grid, choose_materials
 from screening.dots import ON_RECORD, SizeGapModel
 from screening.limits import REJECTED, judge
-from screening.scores import Window, describe, score
+from screening.tracks import track_of
 from screening.trade_offs import add_supply
 
 if TYPE_CHECKING:
     from screening.specification import Specification
+    from screening.tracks import Track
 
 __all__ = ["COLUMNS", "RankResult", "caution_column", "nearest_records", "rank"]
 
@@ -50,7 +49,7 @@ COLUMNS = (
     "supply",
     "cautions",
 )
-"""Columns of the shortlist, in order."""
+"""Columns of the shortlist of quantum dots, in order."""
 
 _INDIRECT = "indirect bulk gap, emission may be weak and broad; "
 
@@ -63,19 +62,24 @@ class RankResult:
     ----------
     specification : Specification
     shortlist : pandas.DataFrame
-        Columns `COLUMNS`, best first.
+        Columns of the track (`COLUMNS` for quantum dots), best first.
     scored : pandas.DataFrame
         Every candidate with its scores.
     rejected : pandas.DataFrame
         Columns `screening.limits.REJECTED`.
-    model : SizeGapModel
+    model : SizeGapModel or AdsorptionModel
     """
 
     specification: "Specification"
     shortlist: pd.DataFrame
     scored: pd.DataFrame
     rejected: pd.DataFrame
-    model: SizeGapModel
+    model: Any
+
+    @property
+    def track(self) -> "Track":
+        """The track that the specification belongs to."""
+        return track_of(self.specification)
 
     def to_frame(self) -> pd.DataFrame:
         """Return a copy of the shortlist."""
@@ -87,7 +91,7 @@ class RankResult:
         return float(1.0 - np.prod(1.0 - chances))
 
     def plot(self, ax: Any = None) -> Any:
-        """Draw gap against size with the window and the shortlist.
+        """Draw the candidates against size.
 
         Parameters
         ----------
@@ -97,22 +101,20 @@ class RankResult:
         -------
         matplotlib.axes.Axes
         """
-        from screening.reporting.figures import draw_map  # noqa: PLC0415 - pyplot is slow to load
-
-        return draw_map(self, ax)
+        return self.track.draw(self, ax)
 
     def _repr_html_(self) -> str:
         return str(self.shortlist.to_html(index=False, escape=True, float_format="{:.3f}".format))
 
 
-def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
-    """Rank the candidates of a specification by their calibrated chance.
+def rank(specification: "Specification", model: Any) -> RankResult:
+    """Rank the candidates of a specification.
 
     Parameters
     ----------
     specification : Specification
-    model : SizeGapModel
-        Fitted and calibrated.
+    model : SizeGapModel or AdsorptionModel
+        Of the specification's track, fitted and calibrated.
 
     Returns
     -------
@@ -121,78 +123,56 @@ def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
     Raises
     ------
     SpecificationError
-        If a material or family is unknown.
+        If a material, family, shape or adsorbate is unknown.
     NothingQualifiesError
         If no candidate reaches the least chance.
     """
-    wanted = specification.candidates
-    materials, refused = choose_materials(wanted, model.rows_["material"])
-    low, high = specification.target.energies_eV
-    window = Window(specification.target.quantity, low, high)
-    grid = candidate_grid(materials, wanted)
-    sizes = specification.laboratory.size_shape()
-    described = describe(model, grid, sizes)
-    scored = score(model, described, window, sizes, specification.laboratory.least_fraction)
-    scored["size_spread_needed"] = _spread_needed(scored, specification)
+    track = track_of(specification)
+    grid, refused = track.candidates(specification, model)
+    scored = track.score(specification, model, grid)
     judgement = judge(scored, specification.limits)
     scored["is_allowed"] = judgement.allowed
     allowed = scored[judgement.allowed]
-    best = _shortlist(allowed, specification)
+    best = _shortlist(allowed, specification, track)
     missed = _missed(allowed, specification)
     turned_down = judgement.rejected(scored)
     if best.empty:
         raise NothingQualifiesError(_nothing(scored, turned_down, specification))
     best["limits"] = judgement.notes(scored.index.get_indexer(best.index).tolist())
     best.insert(0, "rank", np.arange(1, len(best) + 1))
-    best["nearest_source"] = nearest_records(best, model)
-    best["cautions"] = caution_column(best["material"])
-    best = add_supply(best)
+    best = add_supply(track.finish(best, model))
     rejected = pd.concat([refused, turned_down, missed], ignore_index=True)
     return RankResult(
         specification,
-        best[list(COLUMNS)].reset_index(drop=True),
+        best[list(track.columns)].reset_index(drop=True),
         scored,
         rejected.reindex(columns=list(REJECTED)),
         model,
     )
 
 
-def _spread_needed(scored: pd.DataFrame, specification: "Specification") -> pd.Series:
-    """Return the size spread at which a centred batch is good and meets the linewidth asked."""
-    low, high = specification.target.energies_eV
-    slope = scored["slope_eV_per_nm"] * scored["diameter_nm"]
-    share = specification.laboratory.least_fraction
-    needed = spread_for_share(0.5 * (high - low), slope, share)
-    limit_meV = specification.limits.highest_fwhm_meV
-    if limit_meV is not None:
-        width = needed_size_spread(limit_meV / 1000.0, scored["single_dot_fwhm_eV"], slope)
-        needed = np.fmin(needed, np.nan_to_num(width))
-    return pd.Series(needed, index=scored.index)
+def _ordered(scored: pd.DataFrame, track: "Track") -> pd.DataFrame:
+    """Sort by the track's keys, so that ties fall the same way."""
+    keys, rising = track.order(scored)
+    order = keys.sort_values(list(keys.columns), ascending=rising, kind="stable").index
+    return scored.loc[order]
 
 
-def _ordered(scored: pd.DataFrame) -> pd.DataFrame:
-    """Sort by chance, then by tolerance, then by name and size, so that ties fall the same way."""
-    keyed = scored.assign(
-        _chance=scored["chance_in_window"].round(9), _room=scored["size_tolerance_nm"].round(9)
-    )
-    order = ["_chance", "_room", "material", "diameter_nm"]
-    ordered = keyed.sort_values(order, ascending=[False, False, True, True], kind="stable")
-    return ordered.drop(columns=["_chance", "_room"])
-
-
-def _shortlist(scored: pd.DataFrame, specification: "Specification") -> pd.DataFrame:
-    """Take the best diameters of each material, apart by the stated spacing."""
+def _shortlist(
+    scored: pd.DataFrame, specification: "Specification", track: "Track"
+) -> pd.DataFrame:
+    """Take the best diameters of each material, of one shape apart by the stated spacing."""
     cut = specification.shortlist
-    ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)])
-    taken: dict[str, list[float]] = {}
+    ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)], track)
+    taken: dict[str, list[tuple[str, float]]] = {}
     rows = []
-    for index, material, diameter in zip(
-        ordered.index, ordered["material"], ordered["diameter_nm"], strict=True
+    for index, material, shape, diameter in zip(
+        ordered.index, ordered["material"], ordered["shape"], ordered["diameter_nm"], strict=True
     ):
-        sizes = taken.setdefault(material, [])
-        apart = all(abs(diameter - size) >= cut.spacing_nm for size in sizes)
-        if apart and len(sizes) < cut.per_material:
-            sizes.append(diameter)
+        own = taken.setdefault(material, [])
+        apart = all(abs(diameter - size) >= cut.spacing_nm for kind, size in own if kind == shape)
+        if apart and len(own) < cut.per_material:
+            own.append((shape, diameter))
             rows.append(index)
         if len(rows) == cut.length:
             break

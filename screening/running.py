@@ -7,9 +7,7 @@ from typing import Any
 
 import pandas as pd
 
-from features.size_gap import training_rows
 from features.tables import read_table
-from screening.candidates import choose_materials
 from screening.fingerprint import text_hash
 from screening.outputs import (
     build_manifest,
@@ -21,7 +19,8 @@ from screening.outputs import (
 )
 from screening.ranking import RankResult, rank
 from screening.specification import Specification
-from screening.trained import dot_fingerprint, evidence_hash, trained_dots
+from screening.tracks import track_of
+from screening.trained import evidence_hash
 
 __all__ = ["RankRun", "held_out_figures", "run_rank"]
 
@@ -74,9 +73,9 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
     from screening.reporting.report import render_report  # noqa: PLC0415 - figures load slowly
 
     # What cannot be ranked is said before a model is trained for it.
-    choose_materials(specification.candidates, training_rows()["material"])
-    result = rank(specification, trained_dots(specification.seed))
-    model_hash = dot_fingerprint(specification.seed)
+    track = track_of(specification)
+    track.check(specification)
+    result = rank(specification, track.model(specification))
     table = csv_text(result.shortlist)
     prepare_folder(folder, overwrite=overwrite)
     write_atomically(folder / "shortlist.csv", table)
@@ -86,7 +85,7 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
     files = ["shortlist.csv", "shortlist.json", "shortlist.parquet", "rejected.csv"]
     manifest = build_manifest(
         specification=specification.model_dump(mode="json"),
-        model_hash=model_hash,
+        model_hash=track.model_hash(specification),
         folder=folder,
         files=files,
         result_hash=text_hash(table),
@@ -100,10 +99,7 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
 
 def _warnings(result: RankResult) -> list[str]:
     """Say what a reader should know before acting."""
-    notes = []
-    new = result.shortlist["record_state"].eq("new").sum()
-    if new:
-        notes.append(f"{new} of {len(result.shortlist)} rows are materials without size data")
+    notes = result.track.warnings(result)
     if result.shortlist["chance_in_window"].iloc[0] < 0.5:
         notes.append("no candidate is more likely to hit the window than to miss it")
     return notes

@@ -9,7 +9,7 @@ from difflib import get_close_matches
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, Field, ValidationError, model_validator
+from pydantic import BaseModel, Discriminator, Field, Tag, ValidationError, model_validator
 
 from features.emission import HC_eV_nm
 from features.errors import SpecificationError, explain
@@ -19,6 +19,7 @@ from screening.limit_rules import METAL_LIMITS, OPTICAL_LIMITS, Limits
 from screening.plan_rules import Plan
 from screening.space_rules import Space
 from screening.strict_part import StrictPart
+from screening.surface_target import SURFACE_QUANTITIES, SurfaceTarget, target_kind
 from screening.user_tables import collect_faults, numeric_column, read_user_table
 
 __all__ = [
@@ -26,6 +27,7 @@ __all__ = [
     "Laboratory",
     "Shortlist",
     "Specification",
+    "SurfaceTarget",
     "Target",
     "load_specification",
     "parse_specification",
@@ -78,6 +80,15 @@ class Target(StrictPart):
         return HC_eV_nm / high, HC_eV_nm / low
 
 
+TargetChoice = Annotated[
+    Annotated[Target, Tag("emission")] | Annotated[SurfaceTarget, Tag("surface")],
+    Discriminator(target_kind),
+]
+"""Which of the two tracks a target belongs to is told by its keys."""
+
+_TARGETS: Mapping[Any, type[BaseModel]] = {"emission": Target, "surface": SurfaceTarget}
+
+
 class Candidates(StrictPart):
     """Which materials and diameters may be made."""
 
@@ -87,6 +98,9 @@ class Candidates(StrictPart):
     families: list[str] = Field(default_factory=list, description="families; empty for all")
     spaces: list[Space] = Field(
         default_factory=list, max_length=50, description="compositions to enumerate"
+    )
+    shapes: list[str] = Field(
+        default_factory=list, max_length=50, description="metal particles; empty for the usual one"
     )
     exclude_elements: list[Element] = Field(default_factory=list, description="element symbols")
     exclude_materials: list[str] = Field(
@@ -103,10 +117,10 @@ class Candidates(StrictPart):
     @model_validator(mode="after")
     def _sizes(self) -> Self:
         low, high = self.diameter_nm
-        if not SMALLEST_DIAMETER_nm <= low <= high <= LARGEST_DIAMETER_nm:
+        if not 0.0 < low <= high <= LARGEST_DIAMETER_nm:
             raise ValueError(
-                f"diameter_nm out of range: expected {SMALLEST_DIAMETER_nm} <= low <= high <= "
-                f"{LARGEST_DIAMETER_nm} nm, where the model holds, found {self.diameter_nm}"
+                f"diameter_nm out of range: expected 0 < low <= high <= {LARGEST_DIAMETER_nm} nm, "
+                f"where the model holds, found {self.diameter_nm}"
             )
         if (high - low) / self.step_nm > _MOST_DIAMETERS:
             raise ValueError(f"step_nm is too fine: expected at most {_MOST_DIAMETERS} diameters")
@@ -173,7 +187,7 @@ class Specification(StrictPart):
     """One run."""
 
     title: str = Field(default="Untitled", min_length=1, max_length=200, description="heading")
-    target: Target
+    target: TargetChoice
     candidates: Candidates = Candidates()
     laboratory: Laboratory = Laboratory()
     limits: Limits = Limits()
@@ -182,9 +196,22 @@ class Specification(StrictPart):
     seed: int = Field(default=0, ge=0, le=2**31 - 1, description="seed of the trees")
 
     @model_validator(mode="after")
-    def _limits_fit_the_target(self) -> Self:
-        optical = self.target.quantity in {"emission", "optical_gap"}
-        wrong = METAL_LIMITS if optical else OPTICAL_LIMITS
+    def _of_one_track(self) -> Self:
+        """Refuse candidates and limits that only the other track knows."""
+        wanted = self.candidates
+        if isinstance(self.target, SurfaceTarget):
+            if wanted.families or wanted.spaces:
+                raise ValueError(
+                    "candidates.families and spaces are for quantum dots: name metals instead"
+                )
+        elif wanted.shapes:
+            raise ValueError("candidates.shapes is for metal particles: leave it out")
+        elif wanted.diameter_nm[0] < SMALLEST_DIAMETER_nm:
+            raise ValueError(
+                f"candidates.diameter_nm out of range: expected {SMALLEST_DIAMETER_nm} nm or more, "
+                f"where the model holds, found {wanted.diameter_nm}"
+            )
+        wrong = OPTICAL_LIMITS if isinstance(self.target, SurfaceTarget) else METAL_LIMITS
         if asked := [name for name in self.limits.asked() if name in wrong]:
             raise ValueError(
                 f"limits.{asked[0]} has no meaning for the target {self.target.quantity}: "
@@ -197,7 +224,9 @@ def _known_keys(location: tuple[Any, ...]) -> list[str]:
     """Return the keys that the table at a location knows."""
     fields: Mapping[str, Any] = Specification.model_fields
     for step in location[:-1]:
-        annotation = fields[step].annotation if step in fields else None
+        annotation = _TARGETS.get(step) or (fields[step].annotation if step in fields else None)
+        if step == "target":
+            continue
         if not (isinstance(annotation, type) and issubclass(annotation, BaseModel)):
             return []
         fields = annotation.model_fields
@@ -207,7 +236,7 @@ def _known_keys(location: tuple[Any, ...]) -> list[str]:
 def _message(error: Any, where: str) -> str:
     """Turn one validation error into what, where, expected, found, what to do."""
     location = tuple(error["loc"])
-    path = ".".join(str(step) for step in location) or "top level"
+    path = ".".join(str(step) for step in location if step not in _TARGETS) or "top level"
     place = f"{where}, {path}" if where else path
     if error["type"] == "extra_forbidden":
         known = _known_keys(location)
@@ -222,8 +251,10 @@ def _message(error: Any, where: str) -> str:
         return explain(f"missing key {location[-1]!r}", where=place, do="add it")
     if error["type"] == "value_error":
         return explain(str(error["ctx"]["error"]), where=place)
-    found = repr(error.get("input"))
-    return explain("wrong value", where=place, expected=error["msg"], found=found[:80])
+    found, expected = repr(error.get("input")), error["msg"]
+    if path == "target.quantity":
+        expected += f" for quantum dots, {' or '.join(map(repr, SURFACE_QUANTITIES))} for catalysts"
+    return explain("wrong value", where=place, expected=expected, found=found[:80])
 
 
 def parse_specification(data: Mapping[str, Any], where: str = "") -> Specification:
