@@ -16,6 +16,7 @@ from screening.tracks import track_of
 from screening.trade_offs import add_supply
 
 if TYPE_CHECKING:
+    from screening.laboratory import LabUpdate
     from screening.specification import Specification
     from screening.tracks import Track
 
@@ -68,6 +69,10 @@ class RankResult:
     rejected : pandas.DataFrame
         Columns `screening.limits.REJECTED`.
     model : SizeGapModel or AdsorptionModel
+    update : LabUpdate or None
+        What the laboratory's own results changed, where there are any.
+    before : pandas.DataFrame or None
+        The shortlist as it was without them.
     """
 
     specification: "Specification"
@@ -75,6 +80,8 @@ class RankResult:
     scored: pd.DataFrame
     rejected: pd.DataFrame
     model: Any
+    update: "LabUpdate | None" = None
+    before: pd.DataFrame | None = None
 
     @property
     def track(self) -> "Track":
