@@ -159,6 +159,10 @@ class Laboratory(StrictPart):
         default=0.5, gt=0.0, lt=1.0, description="share of particles inside for a good batch"
     )
 
+    results: str | None = Field(
+        default=None, max_length=4096, description="CSV of own results, beside the specification"
+    )
+
     @model_validator(mode="after")
     def _one_distribution(self) -> Self:
         if self.sizes is not None and "size_spread" in self.model_fields_set:
