@@ -1,8 +1,8 @@
 """The ``[plan]`` table of a specification: how the next samples are chosen."""
 
-from typing import Annotated, Literal, Self
+from typing import Annotated, Literal
 
-from pydantic import Field, model_validator
+from pydantic import Field
 
 from screening.strict_part import StrictPart
 
@@ -37,9 +37,3 @@ class Plan(StrictPart):
     costs: dict[str, Cost] = Field(
         default_factory=dict, description="cost of one sample by material; 1 for others"
     )
-
-    @model_validator(mode="after")
-    def _a_pick_is_left(self) -> Self:
-        if round(self.samples * self.random_share) >= self.samples and self.random_share > 0.0:
-            raise ValueError("random_share leaves no sample to choose: lower it or add samples")
-        return self
