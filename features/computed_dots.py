@@ -24,7 +24,7 @@ __all__ = ["CUTTING_DIAMETERS_nm", "compute_dot", "couples_spin", "planned_dots"
 
 CUTTING_DIAMETERS_nm = (1.2, 1.5, 1.8, 2.1, 2.5, 3.0, 3.5, 4.0, 5.0, 6.0, 7.0)
 _BOTH_CENTRES_UP_TO_nm = 3.5
-_LARGEST_BLOCK = 24_000
+_LARGEST_BLOCK = 16_000
 _SMALLEST_SPLITTING_eV = 0.1
 _KEYS = ["parameter_set", "cutting_diameter_nm", "centre"]
 
