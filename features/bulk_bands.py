@@ -1,4 +1,4 @@
-"""What a tight-binding set makes of the bulk: gap, where it is, electron mass, and whether to use it.
+"""What a tight-binding set makes of the bulk: gap, electron mass, and whether to use it.
 
 Energies in eV, masses over the free electron mass, wave vectors in units of 2 pi / a.
 """
@@ -19,9 +19,9 @@ from features.tight_binding import (
 )
 
 __all__ = [
-    "GAP_TOLERANCE_eV",
     "MASS_TOLERANCE",
     "BulkEdges",
+    "GAP_TOLERANCE_eV",
     "accepted_sets",
     "bulk_check",
     "bulk_edges",
@@ -72,7 +72,7 @@ def _edges_at(
     """Return the highest valence and the lowest conduction band at each wave vector."""
     levels = np.linalg.eigvalsh(bloch_hamiltonian(parameters, points, spin_orbit=spin_orbit))
     filled = (5 if parameters.structure == "rocksalt" else 4) * (2 if spin_orbit else 1)
-    return levels[:, filled - 1], levels[:, filled]
+    return np.asarray(levels[:, filled - 1], float), np.asarray(levels[:, filled], float)
 
 
 def bulk_edges(parameters: ParameterSet, *, spin_orbit: bool | None = None) -> BulkEdges:

@@ -145,7 +145,10 @@ def write_table(path: Path) -> None:
         done[key] = compute_dot(*key)
         _write(path, [done[k] for k in planned if k in done])
         seconds = time.perf_counter() - start
-        print(f"{i + 1}/{len(planned)} {key} {done[key]['atoms']} atoms {seconds:.1f} s", flush=True)  # noqa: T201 - progress of a command
+        sys.stdout.write(
+            f"{i + 1}/{len(planned)} {key} {done[key]['atoms']} atoms {seconds:.1f} s\n"
+        )
+        sys.stdout.flush()
     _write(path, [done[k] for k in planned])
 
 
@@ -168,4 +171,6 @@ def _write(path: Path, rows: list[dict[str, object]]) -> None:
 
 
 if __name__ == "__main__":
-    write_table(Path(sys.argv[1]) if len(sys.argv) > 1 else packaged_path("datasets") / "computed_dots.csv")
+    write_table(
+        Path(sys.argv[1]) if len(sys.argv) > 1 else packaged_path("datasets") / "computed_dots.csv"
+    )

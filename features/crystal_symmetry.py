@@ -157,7 +157,7 @@ def _images(block: SymmetryBlock, positions_nm: NDArray[np.float64]) -> NDArray[
 
 def _on_atom(operation: Operation, orbitals: NDArray[np.intp]) -> ComplexArray:
     turned = orbital_rotation(operation.rotation)[np.ix_(orbitals, orbitals)]
-    return np.kron(operation.spin, turned)
+    return np.asarray(np.kron(operation.spin, turned), dtype=np.complex128)
 
 
 def _fixed_space(

@@ -131,7 +131,9 @@ def edge_states(
                 do="choose an energy inside the gap",
             )
         )
-    densities = {name: _density(vector, crystal, len(orbitals)) for name, (_, vector) in best.items()}
+    densities = {
+        name: _density(vector, crystal, len(orbitals)) for name, (_, vector) in best.items()
+    }
     return EdgeStates(
         homo_eV=best["homo"][0],
         lumo_eV=best["lumo"][0],

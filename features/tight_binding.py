@@ -7,6 +7,7 @@ F. Bassani, Phys. Rev. B 57, 6493 (1998)). Energies in eV, lengths in nm, wave v
 """
 
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -35,9 +36,11 @@ ComplexArray = NDArray[np.complex128]
 
 _LEVELS = ("s", "p", "d", "e")
 _WIDTHS = {"s": 1, "p": 3, "d": 5, "e": 1}
-_INTEGRALS = ("ss", "ee", "se", "es", "sp", "ps", "ep", "pe", "sd", "ds", "ed", "de")
-_INTEGRALS += ("pp_sigma", "pp_pi", "pd_sigma", "pd_pi", "dp_sigma", "dp_pi")
-_INTEGRALS += ("dd_sigma", "dd_pi", "dd_delta")
+_INTEGRALS = (
+    *("ss", "ee", "se", "es", "sp", "ps", "ep", "pe", "sd", "ds", "ed", "de"),
+    *("pp_sigma", "pp_pi", "pd_sigma", "pd_pi", "dp_sigma", "dp_pi"),
+    *("dd_sigma", "dd_pi", "dd_delta"),
+)
 
 
 @dataclass(frozen=True)
@@ -103,15 +106,17 @@ def parameter_set(name: str) -> ParameterSet:
     >>> parameter_set("GaAs sp3s*").structure
     'zincblende'
     """
-    row = parameter_sets().loc[name]
+    row: dict[Any, Any] = parameter_sets().loc[name].to_dict()
     levels = {
         (orbital, side): float(row[f"{orbital}_{side}_eV"])
         for orbital in _LEVELS
         for side in ("anion", "cation")
         if not pd.isna(row[f"{orbital}_{side}_eV"])
     }
-    integrals = {key: float(row[f"{key}_eV"]) for key in _INTEGRALS if not pd.isna(row[f"{key}_eV"])}
-    coupling = {
+    integrals = {
+        key: float(row[f"{key}_eV"]) for key in _INTEGRALS if not pd.isna(row[f"{key}_eV"])
+    }
+    coupling: dict[str, float] = {
         side: 0.0 if pd.isna(row[f"spin_orbit_{side}_eV"]) else float(row[f"spin_orbit_{side}_eV"])
         for side in ("anion", "cation")
     }
@@ -128,7 +133,8 @@ def parameter_set(name: str) -> ParameterSet:
 
 def orbital_columns(parameters: ParameterSet) -> NDArray[np.intp]:
     """Return which of the ten orbitals of `features.two_centre` the set uses."""
-    start, used = 0, []
+    start = 0
+    used: list[int] = []
     for orbital in ("s", "p", "d", "e"):
         width = _WIDTHS[orbital]
         if (orbital, "anion") in parameters.levels_eV:
@@ -183,7 +189,7 @@ def bloch_hamiltonian(
     if not spin_orbit:
         return matrix
     doubled = np.einsum("st,kij->ksitj", np.eye(2), matrix).reshape(len(k), 4 * n, 4 * n)
-    return doubled + _bulk_spin_orbit(parameters, used)
+    return np.asarray(doubled + _bulk_spin_orbit(parameters, used), dtype=np.complex128)
 
 
 def _bulk_spin_orbit(parameters: ParameterSet, used: NDArray[np.intp]) -> ComplexArray:

@@ -56,8 +56,10 @@ def two_centre_blocks(direction: ArrayLike, integrals: Mapping[str, float]) -> F
     [2.0, -3.0]
     """
     u = np.atleast_2d(np.asarray(direction, dtype=np.float64))
-    v = {name: float(value) for name, value in integrals.items()}
-    get = lambda name: v.get(name, 0.0)  # noqa: E731 - a name for a default
+
+    def get(name: str) -> float:
+        return float(integrals.get(name, 0.0))
+
     qu = np.einsum("iab,nb->nia", _TENSORS, u)
     uqu = np.einsum("nia,na->ni", qu, u)
     d_sigma = np.sqrt(1.5) * uqu

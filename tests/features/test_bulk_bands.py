@@ -2,8 +2,8 @@ import numpy as np
 import pytest
 
 from features.bulk_bands import (
-    GAP_TOLERANCE_eV,
     MASS_TOLERANCE,
+    GAP_TOLERANCE_eV,
     accepted_sets,
     bulk_check,
     bulk_edges,

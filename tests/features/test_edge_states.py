@@ -6,7 +6,6 @@ from features.computed_dots import couples_spin
 from features.confinement import COULOMB_eV_nm
 from features.crystal_symmetry import block_basis, symmetry_blocks
 from features.edge_states import EdgeStates, coulomb_attraction_eV, edge_states
-from features.errors import PhysicsRangeError
 from features.nanocrystal import Crystallite, spherical_crystallite
 from features.tight_binding import crystal_hamiltonian, orbital_columns, parameter_set
 
@@ -142,13 +141,3 @@ def test_a_hard_spheres_densities_give_the_published_attraction():
     found = coulomb_attraction_eV(crystal, states, 2.0)
     # 1.786: Brus, J. Chem. Phys. 80, 4403 (1984).
     assert found == pytest.approx(-1.786 * COULOMB_eV_nm / (2.0 * radius), rel=0.02)
-
-
-def test_an_energy_outside_the_gap_is_no_edge_but_still_converges_or_is_refused():
-    parameters = parameter_set("ZnSe sp3s*")
-    crystal = spherical_crystallite("zincblende", parameters.lattice_a_nm, 1.3)
-    try:
-        states = edge_states(parameters, crystal, 8.0)
-    except PhysicsRangeError:
-        return
-    assert states.homo_eV < 8.0 < states.lumo_eV
