@@ -11,7 +11,7 @@ __all__ = ["COMPUTED", "SMALLEST_COMPUTED_nm", "computed_rows"]
 
 COMPUTED = "computed"
 """Source of a computed row."""
-SMALLEST_COMPUTED_nm = 2.0
+SMALLEST_COMPUTED_nm = 2.5
 """Below, the passivated surface rules the gap (docs/decisions/0005)."""
 _NOISE_eV = 0.1
 
