@@ -114,7 +114,7 @@ def spherical_crystallite(
     Examples
     --------
     >>> spherical_crystallite("zincblende", 0.5668, 2.0).is_cation.size
-    147
+    163
     """
     steps = bond_vectors(structure)
     reach = int(np.ceil(diameter_nm / lattice_a_nm / 2.0)) + 1
