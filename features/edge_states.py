@@ -22,6 +22,7 @@ __all__ = ["EdgeStates", "coulomb_attraction_eV", "edge_states"]
 FloatArray = NDArray[np.float64]
 
 _LARGEST_RESIDUAL_eV = 1e-6
+_SAME_LEVEL_eV = 1e-8
 
 
 @dataclass(frozen=True)
@@ -117,9 +118,10 @@ def edge_states(
         small = sparse.csc_matrix(basis.conj().T @ (matrix @ basis))
         largest = max(largest, small.shape[0])
         energies, vectors = _pair_around(small, energy_in_gap_eV)
-        for name, i, better in (("homo", 0, max), ("lumo", 1, min)):
+        for name, i, upward in (("homo", 0, 1.0), ("lumo", 1, -1.0)):
             energy = float(energies[i])
-            if name not in best or better(energy, best[name][0]) == energy:
+            # Partners of a degenerate level differ by rounding: the first block's state is taken.
+            if name not in best or upward * (energy - best[name][0]) > _SAME_LEVEL_eV:
                 best[name] = energy, basis @ vectors[:, i]
     residual = max(float(np.linalg.norm(matrix @ v - e * v)) for e, v in best.values())
     if residual > _LARGEST_RESIDUAL_eV:
