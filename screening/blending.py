@@ -142,6 +142,7 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         tree_weight: Any = None,
         start: Sequence[float] | None = None,
         max_iter: int = 200,
+        tree_rows: Any = None,
     ) -> Self:
         """Fit both regressors on all rows.
 
@@ -153,6 +154,8 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
             Rows' own noise for the Gaussian process; weights for the trees.
         start, max_iter
             Passed on to `GroupedGaussianProcess`.
+        tree_rows : array-like of bool or None, default None
+            Rows that the trees learn from; None for all.
 
         Returns
         -------
@@ -166,6 +169,7 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         self._columns = list(columns)
         self._X, self._y = X, np.asarray(y, dtype=np.float64)
         self._weight = None if tree_weight is None else np.asarray(tree_weight, dtype=float)
+        self._tree_rows = np.ones(len(y), bool) if tree_rows is None else np.asarray(tree_rows)
         self.trees_ = self._fit_trees(np.arange(len(self._y)))
         return self
 
@@ -240,6 +244,7 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         return self.weigh_rows(self._y, left, groups, row_weights)
 
     def _fit_trees(self, rows: Any) -> HistGradientBoostingRegressor:
+        rows = rows[self._tree_rows[rows]]
         weight = None if self._weight is None else self._weight[rows]
         with threadpool_limits(1, user_api="openmp"):
             return boosted_trees(self.seed, **(self.tree_options or {})).fit(

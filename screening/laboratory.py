@@ -15,7 +15,7 @@ from scipy.stats import spearmanr
 
 from features.size_gap import LARGEST_DIAMETER_nm, SMALLEST_DIAMETER_nm
 from screening.covariance import FloatArray
-from screening.dots import SizeGapModel
+from screening.dots import ON_RECORD, SizeGapModel
 from screening.measurements import measured_rows
 
 __all__ = ["LabUpdate", "SizeBias", "join_results", "size_bias"]
@@ -102,7 +102,9 @@ def _log_evidence(model: SizeGapModel, rows: pd.DataFrame) -> float:
     """Return the log density of the measured gaps, in eV, given the tables and the sizes."""
     joined = model.conditioned(rows)
     # The Gaussian process sees gaps over a scale that depends on the size.
-    return joined.regressor_.gaussian_.log_posterior_ - float(np.log(joined.scale_of(rows)).sum())
+    return joined.regressor(ON_RECORD).gaussian_.log_posterior_ - float(
+        np.log(joined.scale_of(rows)).sum()
+    )
 
 
 def join_results(model: SizeGapModel, measured: pd.DataFrame) -> LabUpdate:

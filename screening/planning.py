@@ -233,7 +233,7 @@ def _covariance(
     regressors) is shared by all sizes of a material.
     """
     joint = model.joint_covariance(frame)
-    noise = (model.regressor_.gaussian_.noise_ * model.scale_of(frame)) ** 2
+    noise = model.measurement_noise_eV(frame) ** 2
     total = frame["model_sd_eV"].to_numpy() ** 2 + stokes_sd_eV**2
     rest = np.sqrt(np.maximum(total - noise - np.diag(joint), 0.0))
     codes = pd.factorize(frame["material"])[0]
