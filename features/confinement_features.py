@@ -20,7 +20,7 @@ from features.confinement import (
 )
 from features.finite_barrier import finite_barrier_gap_eV
 
-__all__ = ["ConfinementFeatures"]
+__all__ = ["ConfinementFeatures", "LAYER_nm", "SMALLEST_GAP_eV"]
 
 _INPUTS = ("diameter_nm", "gap_eV", "electron_mass_m0", "hole_mass_m0", "dielectric")
 _DEFAULTS = (4.0, 1.5, 0.15, 0.5, 7.0)
@@ -39,8 +39,8 @@ _OUTPUTS = (
     "bohr_radius_over_radius",
     "surface_fraction",
 )
-_LAYER_nm = 0.3
-_SMALLEST_GAP_eV = 0.2
+LAYER_nm = 0.3
+SMALLEST_GAP_eV = 0.2
 
 
 class ConfinementFeatures(TransformerMixin, BaseEstimator):
@@ -127,7 +127,7 @@ def _physics(
     mass = reduced_mass(electron, hole)
     return [
         np.log(mass),
-        np.log(np.maximum(np.abs(gap), _SMALLEST_GAP_eV)),
+        np.log(np.maximum(np.abs(gap), SMALLEST_GAP_eV)),
         np.log(dielectric),
         np.log(hole / electron),
         np.log(diameter),
@@ -137,5 +137,5 @@ def _physics(
         finite_barrier_gap_eV(diameter, gap, electron, hole, dielectric) - gap,
         coulomb_energy_eV(diameter, dielectric),
         exciton_bohr_radius_nm(dielectric, mass) / (diameter / 2.0),
-        surface_fraction(diameter, _LAYER_nm),
+        surface_fraction(diameter, LAYER_nm),
     ]

@@ -209,6 +209,11 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
             trees = self.trees_.predict(X[:, self._columns])
         return mean, trees, sd
 
+    def trees_at(self, X: Any) -> FloatArray:
+        """Return the trees' mean alone for rows with all columns."""
+        with threadpool_limits(1, user_api="openmp"):
+            return np.asarray(self.trees_.predict(np.asarray(X)[:, self._columns]))
+
     def left_out(self, groups: Any) -> LeftOut:
         """Predict every training row from the rows of other groups.
 

@@ -202,6 +202,18 @@ class GroupCalibration:
         beyond = size * (self._z[-1] / self._normal[-1])
         return np.asarray(np.sign(normal) * np.where(size > self._normal[-1], beyond, inside))
 
+    def density_rise(self) -> float:
+        """Return by how much the calibrated density may rise again away from its centre, >= 1.
+
+        Between two levels the density is a normal one over a stretched score and falls; it can
+        jump up only where two stretches meet.
+        """
+        slopes = np.diff(self._normal) / np.maximum(np.diff(self._z), 1e-300)
+        slopes = np.append(slopes, self._normal[-1] / self._z[-1])
+        normal = np.exp(-0.5 * self._normal[1:] ** 2)
+        before = np.minimum.accumulate(normal * slopes[:-1])
+        return float(max(1.0, np.max(normal * slopes[1:] / before)))
+
     def cdf(self, value: Any, mean: Any, sd: Any) -> FloatArray:
         """Return the calibrated chance that the truth lies below a value.
 

@@ -5,6 +5,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from features.errors import NothingQualifiesError, SpecificationError, UnknownMaterialError, explain
 from features.formula import parse_formula
@@ -13,7 +14,7 @@ from features.semiconductors import bulk_constants, known_materials, match_mater
 if TYPE_CHECKING:
     from screening.specification import Candidates
 
-__all__ = ["candidate_grid", "choose_materials", "constants_of", "pair_frame"]
+__all__ = ["candidate_grid", "choose_materials", "constants_of", "pair_frame", "size_grid"]
 
 _USUAL_SHAPE = {"halide perovskite": "cube"}
 """Shape in which a family is usually made; sphere otherwise (common practice)."""
@@ -159,9 +160,7 @@ def candidate_grid(materials: list[str], wanted: "Candidates") -> pd.DataFrame:
     pandas.DataFrame
         As `pair_frame`, materials in the order given, diameters rising.
     """
-    low, high = wanted.diameter_nm
-    steps = int(np.floor((high - low) / wanted.step_nm + 1e-9))
-    diameters = np.round(low + wanted.step_nm * np.arange(steps + 1), 6)
+    diameters = size_grid(wanted)
     pairs = pd.DataFrame(
         {
             "material": np.repeat(materials, len(diameters)),
@@ -169,3 +168,10 @@ def candidate_grid(materials: list[str], wanted: "Candidates") -> pd.DataFrame:
         }
     )
     return pair_frame(pairs)
+
+
+def size_grid(wanted: "Candidates") -> NDArray[np.float64]:
+    """Return the diameters of a specification, nm, rising."""
+    low, high = wanted.diameter_nm
+    steps = int(np.floor((high - low) / wanted.step_nm + 1e-9))
+    return np.round(low + wanted.step_nm * np.arange(steps + 1), 6)

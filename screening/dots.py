@@ -354,6 +354,20 @@ class SizeGapModel:
         columns = [(features[n] - centre) / width for n, (centre, width) in _CENTRES.items()]
         return np.column_stack(columns).astype(np.float64)
 
+    @staticmethod
+    def size_coordinate(diameter_nm: FloatArray) -> FloatArray:
+        """Return sizes in the scaled logarithm that the covariance reads."""
+        centre, width = _CENTRES["log_diameter"]
+        return np.asarray((np.log(diameter_nm) - centre) / width)
+
+    def regressor_columns(self, candidates: pd.DataFrame) -> FloatArray:
+        """Return the columns that the regressors read, one row a candidate."""
+        return self._columns(candidates, training=False)[0]
+
+    def physics_of(self, candidates: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
+        """Return the physics mean and what the bulk constants leave open, eV."""
+        return self._columns(candidates, training=False)[1], _constants_spread_eV(candidates)
+
     def _label_codes(self) -> None:
         sources = self.rows_["source"] + " " + self.rows_["material"]
         materials = pd.concat([self.rows_["material"], computed_rows()["material"]])

@@ -1,22 +1,26 @@
 """The emission track: quantum dots by material and diameter."""
 
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
 
+from features.errors import NothingQualifiesError, explain
 from features.size_control import needed_size_spread, spread_for_share
 from features.size_gap import training_rows
 from screening.candidates import candidate_grid, choose_materials
 from screening.dots import SizeGapModel
+from screening.fingerprint import text_hash
 from screening.ranking import COLUMNS, caution_column, nearest_records
 from screening.scores import Window, describe, score
+from screening.sweep import Sweep, SweepCounts
 from screening.tracks import Sections
 from screening.trained import dot_fingerprint, trained_dots
 
 if TYPE_CHECKING:
     from screening.ranking import RankResult
-    from screening.specification import Specification
+    from screening.specification import Candidates, Specification
 
 __all__ = ["EmissionTrack"]
 
@@ -24,7 +28,9 @@ __all__ = ["EmissionTrack"]
 class EmissionTrack:
     """Quantum dots: see `screening.tracks.Track`."""
 
-    def __init__(self) -> None:
+    def __init__(self, kept: Path | None = None) -> None:
+        self.kept = kept
+        self.counts: SweepCounts | None = None
         self.columns: tuple[str, ...] = COLUMNS
         self.brief = {
             "rank": 0,
@@ -40,7 +46,9 @@ class EmissionTrack:
 
     def check(self, specification: "Specification") -> None:
         """Refuse unknown materials and families."""
-        choose_materials(specification.candidates, training_rows()["material"])
+        wanted = specification.candidates
+        if not wanted.spaces or wanted.materials or wanted.families:
+            choose_materials(wanted, training_rows()["material"])
 
     def model(self, specification: "Specification") -> SizeGapModel:
         """Return the model, learned now or rebuilt from what was kept."""
@@ -53,10 +61,38 @@ class EmissionTrack:
     def candidates(
         self, specification: "Specification", model: SizeGapModel
     ) -> tuple[pd.DataFrame, pd.DataFrame]:
-        """Return every material at every diameter, and the refused materials."""
+        """Return every material at every diameter, and the refused materials.
+
+        With candidate spaces only the materials that the shortlist will hold, found by a sweep.
+        """
         wanted = specification.candidates
-        materials, refused = choose_materials(wanted, model.rows_["material"])
+        materials, refused = _named_materials(wanted, model)
+        if wanted.spaces:
+            materials, refused = self._swept(specification, model, materials, refused)
         return candidate_grid(materials, wanted), refused
+
+    def _swept(
+        self,
+        specification: "Specification",
+        model: SizeGapModel,
+        named: list[str],
+        refused: pd.DataFrame,
+    ) -> tuple[list[str], pd.DataFrame]:
+        key = text_hash(specification.model_dump_json() + self.model_hash(specification))
+        sweep = Sweep(specification, model, self, self.kept, key)
+        found = sweep.run(named)
+        self.counts = sweep.counts
+        if not found:
+            raise NothingQualifiesError(
+                explain(
+                    "no candidate qualifies",
+                    where="candidates.spaces",
+                    found=f"{sweep.counts.compositions} compositions, none likely enough and "
+                    "within the limits",
+                    do="widen the window, the spaces or the limits, or lower least_chance",
+                )
+            )
+        return found, pd.concat([refused, _sweep_refusals(sweep.counts, len(found))])
 
     def score(
         self, specification: "Specification", model: SizeGapModel, grid: pd.DataFrame
@@ -108,6 +144,22 @@ class EmissionTrack:
         )
 
         return emission_sections(result, evidence)
+
+
+def _named_materials(wanted: "Candidates", model: SizeGapModel) -> tuple[list[str], pd.DataFrame]:
+    """Return the materials that the specification names besides its spaces."""
+    if wanted.spaces and not (wanted.materials or wanted.families):
+        return [], pd.DataFrame(columns=["material", "reason", "limit", "verdict"])
+    return choose_materials(wanted, model.rows_["material"])
+
+
+def _sweep_refusals(counts: SweepCounts, n_found: int) -> pd.DataFrame:
+    """Return what became of the compositions that are not listed, together."""
+    rows = [(f"{number} compositions", reason) for reason, number in counts.refused.items()]
+    others = counts.compositions - n_found
+    rows.append((f"{others} compositions", "less likely than those listed, or outside the limits"))
+    frame = pd.DataFrame(rows, columns=["material", "reason"])
+    return frame.assign(limit="candidates.spaces", verdict="fail")
 
 
 def _spread_needed(scored: pd.DataFrame, specification: "Specification") -> pd.Series:

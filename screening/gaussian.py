@@ -188,6 +188,19 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
             variance[rows] = np.diag(block) - noise[rows]
         return mean, np.sqrt(np.maximum(variance, 0.0))
 
+    def factorised(self) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Return training rows, their weights in the mean, and the lower Cholesky factor.
+
+        Returns
+        -------
+        rows : ndarray of shape (n_rows, n_columns)
+        weights : ndarray of shape (n_rows,)
+        factor : ndarray of shape (n_rows, n_rows)
+            Of the covariance with noise; only the lower triangle counts.
+        """
+        check_is_fitted(self)
+        return self.X_, self._alpha, self._cholesky[0]
+
     @property
     def noise_(self) -> float:
         """Fitted residual noise (standard deviation, unit of y)."""

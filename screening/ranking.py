@@ -20,7 +20,7 @@ if TYPE_CHECKING:
     from screening.specification import Specification
     from screening.tracks import Track
 
-__all__ = ["COLUMNS", "RankResult", "caution_column", "nearest_records", "rank"]
+__all__ = ["COLUMNS", "RankResult", "caution_column", "nearest_records", "rank", "shortlist_of"]
 
 COLUMNS = (
     "rank",
@@ -140,7 +140,7 @@ def rank(specification: "Specification", model: Any) -> RankResult:
     judgement = judge(scored, specification.limits)
     scored["is_allowed"] = judgement.allowed
     allowed = scored[judgement.allowed]
-    best = _shortlist(allowed, specification, track)
+    best = shortlist_of(allowed, specification, track)
     missed = _missed(allowed, specification)
     turned_down = judgement.rejected(scored)
     if best.empty:
@@ -165,10 +165,23 @@ def _ordered(scored: pd.DataFrame, track: "Track") -> pd.DataFrame:
     return scored.loc[order]
 
 
-def _shortlist(
+def shortlist_of(
     scored: pd.DataFrame, specification: "Specification", track: "Track"
 ) -> pd.DataFrame:
-    """Take the best diameters of each material, of one shape apart by the stated spacing."""
+    """Take the best diameters of each material, of one shape apart by the stated spacing.
+
+    Parameters
+    ----------
+    scored : pandas.DataFrame
+        Allowed candidates with their scores.
+    specification : Specification
+    track : Track
+
+    Returns
+    -------
+    pandas.DataFrame
+        Rows of ``scored``, best first.
+    """
     cut = specification.shortlist
     ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)], track)
     taken: dict[str, list[tuple[str, float]]] = {}

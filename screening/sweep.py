@@ -1,0 +1,304 @@
+"""Sweeps: composition spaces of any size searched block by block for the best candidates.
+
+Compositions are made one at a time and searched in blocks (`screening.sweep_block`). The chance of
+the last place on the list rises as the search goes on and everything below it is dropped, so memory
+stays flat. What is dropped could not be listed: the shortlist is that of the exhaustive run, for
+any number of workers. Workers come from joblib's configuration; finished blocks can be kept on disk
+and are taken up again by the same run.
+"""
+
+import io
+import json
+from collections.abc import Iterator
+from dataclasses import dataclass, field
+from itertools import islice
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import pandas as pd
+from joblib import Parallel, delayed, effective_n_jobs
+
+from features.formula import Compound, parse_formula
+from features.semiconductors import find_material
+from features.solid_solutions import is_solid_solution, sublattice_key
+from screening.candidates import pair_frame, size_grid
+from screening.fingerprint import text_hash
+from screening.limits import judge
+from screening.outputs import write_atomically
+from screening.sweep_block import BlockQuestion, Found, search_block
+
+if TYPE_CHECKING:
+    from screening.dots import SizeGapModel
+    from screening.specification import Candidates, Specification
+    from screening.tracks import Track
+
+__all__ = ["Sweep", "SweepCounts", "count_mixtures", "enumerate_compositions"]
+
+_BLOCK = 256
+_CHUNK = 400
+_TIE = 1e-8
+
+
+@dataclass
+class SweepCounts:
+    """What became of the candidates of a sweep.
+
+    Attributes
+    ----------
+    compositions, pairs : int
+        Compositions met, and pairs of composition and size.
+    with_trees, solved, scored : int
+        Pairs that the bounds left for the trees, for a solve, and for every score.
+    refused : dict of str to int
+        Compositions that the specification refuses, by reason.
+    best : dict of str to int
+        Compositions by their highest chance, exact or an upper bound, in tenths.
+    """
+
+    compositions: int = 0
+    pairs: int = 0
+    with_trees: int = 0
+    solved: int = 0
+    scored: int = 0
+    refused: dict[str, int] = field(default_factory=dict)
+    best: dict[str, int] = field(default_factory=dict)
+
+    def add(self, found: Found) -> None:
+        """Count a block."""
+        self.compositions += len(found.best)
+        self.pairs += found.n_pairs
+        self.with_trees += found.n_trees
+        self.solved += found.n_solved
+        places = np.clip((found.best * 10.0).astype(int), 0, 9)
+        for place, count in zip(*np.unique(places, return_counts=True), strict=True):
+            name = f"{place / 10:.1f} to {(place + 1) / 10:.1f}"
+            self.best[name] = self.best.get(name, 0) + int(count)
+
+
+def count_mixtures(wanted: "Candidates") -> int:
+    """Return how many mixtures the spaces of a specification hold, before any is made."""
+    return sum(space.space().n_mixtures for space in wanted.spaces)
+
+
+def enumerate_compositions(
+    wanted: "Candidates", refused: dict[str, int] | None = None
+) -> Iterator[str]:
+    """Yield the compositions of all spaces that the specification allows, each once.
+
+    Parameters
+    ----------
+    wanted : Candidates
+    refused : dict of str to int or None, default None
+        Counts by reason, raised on the way.
+
+    Yields
+    ------
+    str
+        Formula, named as in the tables where it is on record.
+    """
+    counts = {} if refused is None else refused
+    seen: set[str] = set()
+    excluded = set(wanted.exclude_elements)
+    left_out = {parse_formula(text).formula for text in wanted.exclude_materials}
+    known: dict[object, bool] = {}
+    for space in wanted.spaces:
+        for compound in space.space():
+            formula = compound.formula
+            reason = ""
+            if formula in seen:
+                continue
+            seen.add(formula)
+            if excluded & {symbol for symbol, _ in compound.parts}:
+                reason = "contains excluded elements"
+            elif formula in left_out:
+                reason = "excluded by name"
+            elif space.on_record and not (find_material(formula) or _is_known(compound, known)):
+                reason = "no solid solution of materials on record"
+            if reason:
+                counts[reason] = counts.get(reason, 0) + 1
+            else:
+                yield find_material(formula) or formula
+
+
+def _is_known(compound: Compound, known: dict[object, bool]) -> bool:
+    """Return whether all end members are on record, asked once a choice of elements."""
+    key = sublattice_key(compound)
+    if key not in known:
+        known[key] = is_solid_solution(compound)
+    return known[key]
+
+
+class Sweep:
+    """One search.
+
+    Parameters
+    ----------
+    specification : Specification
+        With candidate spaces and an optical target.
+    model : SizeGapModel
+        Fitted and calibrated.
+    track : Track
+        Scores candidates in full and orders them.
+    kept : pathlib.Path or None, default None
+        Folder for finished blocks; None keeps nothing.
+    key : str, default ""
+        Hash of all that the blocks follow from.
+    """
+
+    def __init__(
+        self,
+        specification: "Specification",
+        model: "SizeGapModel",
+        track: "Track",
+        kept: Path | None = None,
+        key: str = "",
+    ) -> None:
+        self.specification, self.model, self.track = specification, model, track
+        self.kept, self.key = kept, key
+        target = specification.target
+        self.question = BlockQuestion(
+            tuple(size_grid(specification.candidates).tolist()),
+            target.energies_eV,
+            target.quantity == "emission",
+        )
+        self.counts = SweepCounts()
+        self._pool = pd.DataFrame(
+            {"material": pd.Series(dtype=object), "diameter_nm": [], "chance": [], "open": []}
+        )
+        self._scored: list[pd.DataFrame] = []
+        self._listed = pd.DataFrame()
+
+    def run(self, named: list[str]) -> list[str]:
+        """Search all compositions.
+
+        Parameters
+        ----------
+        named : list of str
+            Materials that compete besides those of the spaces.
+
+        Returns
+        -------
+        list of str
+            The materials of the shortlist, sorted; empty where nothing qualifies.
+        """
+        names = self._names(named)
+        least = max(self.specification.shortlist.least_chance, 1e-12)
+        number = 0
+        while blocks := list(islice(_batches(names), 2 * effective_n_jobs(None))):
+            tasks = [(number + at, block) for at, block in enumerate(blocks)]
+            number += len(blocks)
+            for found in self._searched(tasks, least):
+                self.counts.add(found)
+                self._take(found)
+            least = self._cut(least)
+        return sorted(set(self._listed["material"])) if len(self._listed) else []
+
+    def _names(self, named: list[str]) -> Iterator[str]:
+        known = set(named)
+        yield from named
+        for name in enumerate_compositions(self.specification.candidates, self.counts.refused):
+            if name not in known:
+                yield name
+
+    def _searched(self, tasks: list[tuple[int, list[str]]], least: float) -> list[Found]:
+        """Return the blocks' findings in order, from disk where they are kept."""
+        read = [_read(self._path(number, block)) for number, block in tasks]
+        open_ = [at for at, found in enumerate(read) if found is None]
+        made = Parallel()(
+            delayed(search_block)(self.model, tasks[at][1], self.question, least) for at in open_
+        )
+        for at, found in zip(open_, made, strict=True):
+            read[at] = found
+            path = self._path(*tasks[at])
+            if path is not None:
+                _keep(path, found)
+        return [found for found in read if found is not None]
+
+    def _path(self, number: int, block: list[str]) -> Path | None:
+        if self.kept is None:
+            return None
+        content = text_hash(json.dumps([self.key, block]))[:24]
+        return self.kept / f"{number:07d}-{content}.npz"
+
+    def _take(self, found: Found) -> None:
+        rows = pd.DataFrame(
+            {
+                "material": found.material,
+                "diameter_nm": found.diameter_nm,
+                "chance": found.chance,
+                "open": True,
+            }
+        )
+        self._pool = pd.concat([self._pool, rows], ignore_index=True)
+
+    def _cut(self, least: float) -> float:
+        """Score the likeliest pairs until the list is settled; return the chance that it asks."""
+        length = self.specification.shortlist.length
+        order = ["chance", "material", "diameter_nm"]
+        self._pool = self._pool.sort_values(order, ascending=[False, True, True], kind="stable")
+        last = least
+        while True:
+            todo = self._pool[self._pool["open"].astype(bool) & (self._pool["chance"] >= last)]
+            if todo.empty:
+                break
+            chunk = todo.head(_CHUNK)
+            self._scored.append(self._allowed(chunk))
+            self._pool.loc[chunk.index, "open"] = False
+            self._listed = self._best(pd.concat(self._scored, ignore_index=True))
+            if len(self._listed) == length:
+                last = max(least, float(self._listed["chance_in_window"].min()) - _TIE)
+        self._pool = self._pool[self._pool["chance"] >= last].reset_index(drop=True)
+        rows = pd.concat(self._scored, ignore_index=True) if self._scored else pd.DataFrame()
+        self._scored = [rows[rows["chance_in_window"] >= last]] if len(rows) else []
+        return last
+
+    def _allowed(self, pairs: pd.DataFrame) -> pd.DataFrame:
+        grid = pair_frame(pairs[["material", "diameter_nm"]].reset_index(drop=True))
+        scored = self.track.score(self.specification, self.model, grid)
+        self.counts.scored += len(scored)
+        return scored[judge(scored, self.specification.limits).allowed]
+
+    def _best(self, scored: pd.DataFrame) -> pd.DataFrame:
+        from screening.ranking import shortlist_of  # noqa: PLC0415 - it imports the tracks
+
+        return shortlist_of(scored, self.specification, self.track)
+
+
+def _batches(names: Iterator[str]) -> Iterator[list[str]]:
+    while block := list(islice(names, _BLOCK)):
+        yield block
+
+
+def _read(path: Path | None) -> Found | None:
+    """Return a kept block, or None where there is none that is whole."""
+    if path is None or not path.is_file():
+        return None
+    try:
+        with np.load(path, allow_pickle=False) as data:
+            n_pairs, n_trees, n_solved = (int(value) for value in data["numbers"])
+            return Found(
+                material=data["material"].astype(object),
+                diameter_nm=data["diameter"],
+                chance=data["chance"],
+                n_pairs=n_pairs,
+                n_trees=n_trees,
+                n_solved=n_solved,
+                best=data["best"],
+            )
+    except (OSError, ValueError, KeyError):
+        return None
+
+
+def _keep(path: Path, found: Found) -> None:
+    path.parent.mkdir(parents=True, exist_ok=True)
+    data = io.BytesIO()
+    arrays: dict[str, Any] = {
+        "material": found.material.astype(str),
+        "diameter": found.diameter_nm,
+        "chance": found.chance,
+        "numbers": np.array([found.n_pairs, found.n_trees, found.n_solved]),
+        "best": found.best,
+    }
+    np.savez(data, **arrays)
+    write_atomically(path, data.getvalue())
