@@ -3,9 +3,11 @@ import pandas as pd
 import pytest
 
 from screening.candidates import pair_frame
-from screening.computed_dots_audit import beside_measurements, cost_of_atoms
+from screening.computed_dots_audit import beside_measurements, cost_of_atoms, error_by_material
 from screening.computed_rows import SMALLEST_COMPUTED_nm, computed_rows
 from screening.dots import NEW, ON_RECORD, SizeGapModel
+
+FEW = ["Ag2S", "Ge", "GaP", "HgTe", "InAs", "PbTe", "SnSe", "SnTe", "ZnS", "ZnSe", "CsPbI3"]
 
 
 @pytest.fixture(scope="module")
@@ -68,3 +70,16 @@ def test_cost_rises_with_atoms_and_six_nanometres_take_less_than_a_minute():
     assert table["atoms"].is_monotonic_increasing
     assert table["atoms"].iloc[-1] > 4500
     assert table["seconds"].iloc[-1] < 60.0
+
+
+def test_left_out_errors_by_material_are_those_of_a_model_that_never_saw_it(rows):
+    few = rows[rows["material"].isin(FEW)]
+    table = error_by_material(few, computed=True)
+    assert sorted(table.index) == sorted(FEW)
+    own = few["material"].eq("ZnSe")
+    model = SizeGapModel().fit(few[~own]).calibrate([NEW])
+    error = (model.predict(few[own])["optical_gap_eV"] - few[own]["optical_gap_eV"]).abs()
+    assert table.loc["ZnSe", "error_eV"] == pytest.approx(
+        np.average(error, weights=few[own]["vote"])
+    )
+    assert table["inside_90"].between(0.0, 1.0).all()
