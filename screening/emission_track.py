@@ -20,9 +20,15 @@ __all__ = ["EmissionTrack"]
 
 
 class EmissionTrack:
-    """Quantum dots: see `screening.tracks.Track`."""
+    """Quantum dots: see `screening.tracks.Track`.
 
-    def __init__(self) -> None:
+    Parameters
+    ----------
+    specification : Specification
+    """
+
+    def __init__(self, specification: "Specification") -> None:
+        self.specification = specification
         self.columns: tuple[str, ...] = COLUMNS
         self.brief = {
             "rank": 0,
@@ -36,33 +42,29 @@ class EmissionTrack:
             "record_state": 0,
         }
 
-    def check(self, specification: "Specification") -> None:
+    def check(self) -> None:
         """Refuse unknown materials and families."""
-        choose_materials(specification.candidates, training_rows()["material"])
+        choose_materials(self.specification.candidates, training_rows()["material"])
 
-    def model(self, specification: "Specification") -> SizeGapModel:
+    def model(self) -> SizeGapModel:
         """Return the model, learned now or rebuilt from what was kept."""
-        return trained_dots(specification.seed)
+        return trained_dots(self.specification.seed)
 
-    def model_hash(self, specification: "Specification") -> str:
+    def model_hash(self) -> str:
         """Return the hash of all that the model follows from."""
-        return dot_fingerprint(specification.seed)
+        return dot_fingerprint(self.specification.seed)
 
-    def candidates(
-        self, specification: "Specification", model: SizeGapModel
-    ) -> tuple[pd.DataFrame, pd.DataFrame]:
+    def candidates(self, model: SizeGapModel) -> tuple[pd.DataFrame, pd.DataFrame]:
         """Return every material at every diameter, and the refused materials."""
-        wanted = specification.candidates
+        wanted = self.specification.candidates
         materials, refused = choose_materials(wanted, model.rows_["material"])
         return candidate_grid(materials, wanted), refused
 
-    def score(
-        self, specification: "Specification", model: SizeGapModel, grid: pd.DataFrame
-    ) -> pd.DataFrame:
+    def score(self, model: SizeGapModel, grid: pd.DataFrame) -> pd.DataFrame:
         """Return gap, emission, linewidth, chance, fraction and tolerance."""
-        low, high = specification.target.energies_eV
-        window = Window(specification.target.quantity, low, high)
-        described = describe(model, grid, specification.laboratory.size_spread)
+        low, high = self.specification.target.energies_eV
+        window = Window(self.specification.target.quantity, low, high)
+        described = describe(model, grid, self.specification.laboratory.size_spread)
         return score(model, described, window)
 
     def order(self, scored: pd.DataFrame) -> tuple[pd.DataFrame, list[bool]]:

@@ -30,7 +30,7 @@ __all__ = [
 ]
 
 SCHEMA_VERSION = 1
-_UNITS = ("_eV_per_nm", "_eV", "_meV", "_nm", "_K")
+_UNITS = ("_eV_per_nm", "_umol_per_g", "_umol_per_m2", "_eV", "_meV", "_nm", "_K")
 _RISKY = ("=", "+", "-", "@", "\t", "\r")
 _PROOF = "manifest.json"
 

@@ -119,8 +119,8 @@ def rank(specification: "Specification", model: Any) -> RankResult:
         If no candidate reaches the least chance.
     """
     track = track_of(specification)
-    grid, refused = track.candidates(specification, model)
-    scored = track.score(specification, model, grid)
+    grid, refused = track.candidates(model)
+    scored = track.score(model, grid)
     best = _shortlist(scored, specification, track)
     missed = _missed(scored, specification)
     if best.empty:

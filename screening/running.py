@@ -74,8 +74,8 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
 
     # What cannot be ranked is said before a model is trained for it.
     track = track_of(specification)
-    track.check(specification)
-    result = rank(specification, track.model(specification))
+    track.check()
+    result = rank(specification, track.model())
     table = csv_text(result.shortlist)
     prepare_folder(folder, overwrite=overwrite)
     write_atomically(folder / "shortlist.csv", table)
@@ -85,7 +85,7 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
     files = ["shortlist.csv", "shortlist.json", "shortlist.parquet", "rejected.csv"]
     manifest = build_manifest(
         specification=specification.model_dump(mode="json"),
-        model_hash=track.model_hash(specification),
+        model_hash=track.model_hash(),
         folder=folder,
         files=files,
         result_hash=text_hash(table),
