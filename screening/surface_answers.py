@@ -62,7 +62,8 @@ def _row_faults(model: AdsorptionModel, frame: pd.DataFrame) -> list[str]:
         try:
             model.predict_surfaces(frame.iloc[[position]])
         except FewnmError as error:
-            faults.append(f"row {position + 2}: {error}")
+            # asked alone every row is the first; its place in the table is what helps
+            faults.append(f"row {position + 2}: {str(error).replace(' at row 1', '', 1)}")
     return faults
 
 
