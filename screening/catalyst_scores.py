@@ -107,24 +107,6 @@ def _best_kind(
     }
 
 
-def _block(
-    sites: ParticleSites, level: SiteLevel, question: SurfaceQuestion, draws: Draws
-) -> pd.DataFrame:
-    found = _descriptors(sites, level, question, draws)
-    chance = _chance(found, level, question)
-    frame = pd.DataFrame(_best_kind(sites, chance, found))
-    low, high = question.window_eV
-    inside = (found.draws >= low) & (found.draws <= high)
-    spread = _quantiles(np.einsum("sc,scd->sd", sites.n_sites, inside.astype(np.float64)))
-    expected = (sites.n_sites * chance).sum(axis=1)
-    for per, unit in (("umol_per_g", sites.umol_per_g), ("umol_per_m2", sites.umol_per_m2)):
-        frame[f"sites_in_window_{per}"] = expected * unit
-        frame[f"sites_in_window_low_{per}"] = spread[0] * unit
-        frame[f"sites_in_window_high_{per}"] = spread[2] * unit
-    frame["atoms"], frame["dispersion"] = sites.n_atoms, sites.n_surface / sites.n_atoms
-    return frame
-
-
 def _energies(frame: pd.DataFrame, level: SiteLevel, question: SurfaceQuestion) -> pd.DataFrame:
     """Add the adsorption energy of the best site, its free energy and the descriptor's interval."""
     shift = frame["descriptor_eV"] - level.descriptor_eV
@@ -165,13 +147,8 @@ def _reference(model: AdsorptionModel, question: SurfaceQuestion, draws: Draws) 
 
 
 def _relative_activity(
-    sites: ParticleSites,
-    level: SiteLevel,
-    question: SurfaceQuestion,
-    draws: Draws,
-    reference: _Reference,
-) -> pd.DataFrame:
-    found = _descriptors(sites, level, question, draws)
+    sites: ParticleSites, found: _Descriptors, question: SurfaceQuestion, reference: _Reference
+) -> dict[str, FloatArray]:
     total = _activity(found, sites, question)
     columns = {}
     for per, unit, own in (
@@ -182,7 +159,40 @@ def _relative_activity(
         columns[f"relative_volcano_activity_per_{per}"] = middle
         columns[f"relative_volcano_activity_low_per_{per}"] = low
         columns[f"relative_volcano_activity_high_per_{per}"] = high
-    return pd.DataFrame(columns)
+    return columns
+
+
+def _block(
+    sites: ParticleSites,
+    level: SiteLevel,
+    question: SurfaceQuestion,
+    draws: Draws,
+    reference: _Reference | None,
+) -> pd.DataFrame:
+    """Score the sizes of one metal and shape."""
+    found = _descriptors(sites, level, question, draws)
+    chance = _chance(found, level, question)
+    frame = pd.DataFrame(_best_kind(sites, chance, found))
+    frame["atoms"], frame["dispersion"] = sites.n_atoms, sites.n_surface / sites.n_atoms
+    frame = frame.assign(**_in_window(sites, found, chance, question))
+    if reference is not None:
+        frame = frame.assign(**_relative_activity(sites, found, question, reference))
+    return frame
+
+
+def _in_window(
+    sites: ParticleSites, found: _Descriptors, chance: FloatArray, question: SurfaceQuestion
+) -> dict[str, FloatArray]:
+    low, high = question.window_eV
+    inside = (found.draws >= low) & (found.draws <= high)
+    spread = _quantiles(np.einsum("sc,scd->sd", sites.n_sites, inside.astype(np.float64)))
+    expected = (sites.n_sites * chance).sum(axis=1)
+    columns = {}
+    for per, unit in (("umol_per_g", sites.umol_per_g), ("umol_per_m2", sites.umol_per_m2)):
+        columns[f"sites_in_window_{per}"] = expected * unit
+        columns[f"sites_in_window_low_{per}"] = spread[0] * unit
+        columns[f"sites_in_window_high_{per}"] = spread[2] * unit
+    return columns
 
 
 def _slices(sites: ParticleSites) -> Iterator[ParticleSites]:
@@ -220,13 +230,7 @@ def score_particles(
         sizes = rows["diameter_nm"].to_numpy(dtype=np.float64)
         sites = particle_sites(str(material), str(shape), sizes, is_step=question.is_step)
         level = levels[material]
-        frames = [_block(part, level, question, draws) for part in _slices(sites)]
+        frames = [_block(part, level, question, draws, reference) for part in _slices(sites)]
         frame = _energies(pd.concat(frames, ignore_index=True), level, question)
-        if reference is not None:
-            activity = [
-                _relative_activity(part, level, question, draws, reference)
-                for part in _slices(sites)
-            ]
-            frame = frame.join(pd.concat(activity, ignore_index=True))
         parts.append(frame.set_index(rows.index))
     return grid.join(pd.concat(parts))

@@ -54,7 +54,7 @@ def _restored(path: Path) -> AdsorptionModel | None:
     """Return the kept model, or None where the file is missing or holds something else."""
     try:
         return AdsorptionModel.restored(json.loads(path.read_text(encoding="utf-8")))
-    except (OSError, ValueError, KeyError, TypeError, AttributeError):
+    except (OSError, ValueError, LookupError, TypeError, AttributeError):
         return None
 
 

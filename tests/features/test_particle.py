@@ -77,7 +77,8 @@ def test_every_shape_of_platinum_exposes_at_least_as_much_as_the_rule_for_sphere
     ids=lambda r: f"{r.shape}-{r.shell}",
 )
 def test_counts_by_diameter_meet_the_closed_shells_of_the_table(row):
-    # closed forms after van Hardeveld, Hartog, Surf. Sci. 15, 189 (1969); shells of the table go beyond the built ones
+    # closed forms after van Hardeveld, Hartog, Surf. Sci. 15, 189 (1969); the table's shells go
+    # beyond the built ones
     volume = metal_lattice("Pt").atomic_volume_nm3
     counts = particle_counts("Pt", row.shape, equivalent_diameter_nm(row.n_atoms, volume))
     found = {"vertex": 0.0, "edge": 0.0, "(111)": 0.0, "(100)": 0.0}

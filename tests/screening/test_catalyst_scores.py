@@ -161,7 +161,9 @@ def test_large_particles_bind_as_their_extended_surface(metals):
     row = score_particles(metals, grid("Au", "octahedron", [20.0]), window(2.0, 3.0)).iloc[0]
     surface = metals.predict_surfaces(pd.DataFrame({"material": ["Au"], "adsorbate": ["O"]}))
     assert row["best_site"] == "(111) terrace, 9 neighbours"
-    assert row["adsorption_energy_eV"] == pytest.approx(surface["adsorption_energy_eV"][0], abs=0.02)
+    assert row["adsorption_energy_eV"] == pytest.approx(
+        surface["adsorption_energy_eV"][0], abs=0.02
+    )
 
 
 def test_the_same_seed_gives_the_same_numbers_and_another_seed_about_the_same(metals):
