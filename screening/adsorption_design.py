@@ -43,7 +43,10 @@ _N = len(METAL_DESCRIPTORS)
 _HOLLOW, _STRONG_PURE, _WEAK_PURE, _ADSORBATE = 2 * _N, 2 * _N + 1, 2 * _N + 2, 2 * _N + 3
 
 # Pure surfaces that tell which metal of an alloy binds the family more strongly.
-_ROLES = {"CH3": ("C", "H"), "H": ("C", "H")}
+_ROLES = {"CH3": ("C",), "H": ("C", "H")}
+# Methyl sits on one atom by one sigma bond: of two metals with like energies of carbon, that with
+# the larger coupling to the d band holds it.
+_ROLE_BY_COUPLING = frozenset({"CH3"})
 
 # A minimum over one or two sites is an upper bound: its scatter over one-site rows, eV.
 _SITE_SD_EV = {1: 0.4, 2: 0.2}
@@ -165,6 +168,8 @@ class SurfaceDesign:
         self.scaled = (self.energies[list(adsorbates)] - scale["mean"]) / scale["sd"]
         order = self.energies[list(_ROLES.get(adsorbates[0], ("N", "C")))]
         self.strength = ((order - order.mean()) / order.std()).mean(axis=1)
+        if adsorbates[0] in _ROLE_BY_COUPLING:
+            self.strength -= standardised_descriptors()["log10_coupling"]
 
     def matrix(self, frame: pd.DataFrame) -> FloatArray:
         """Return one row a surface.

@@ -14,6 +14,10 @@ __all__ = ["close_packed_structure", "read_surfaces"]
 
 _STRUCTURES = ("fcc", "hcp", "bcc", "L10", "L12")
 _FACETS = ("111", "0001", "110", "100", "211", "101")
+# fcc stands for the fcc form of any metal, which the reference tables hold
+_ORDERED = {"L10": 0.5, "L12": 0.75}
+_SHARE_TOLERANCE = 0.01
+_FACE_OF = {"0001": "hcp", "101": "L10"}
 _CLOSE_PACKED = frozenset({"101", "111", "0001"})
 
 
@@ -35,7 +39,8 @@ def read_surfaces(frame: pd.DataFrame, adsorbates: Collection[str]) -> pd.DataFr
     Raises
     ------
     TableError
-        If a column is missing, or a structure or facet is unknown.
+        If a column is missing, a structure or facet is unknown, or they do not fit the metal or
+        each other.
     SpecificationError
         If an adsorbate is unknown.
     FormulaError, UnknownMaterialError
@@ -46,6 +51,8 @@ def read_surfaces(frame: pd.DataFrame, adsorbates: Collection[str]) -> pd.DataFr
     rows = pd.DataFrame(parts, columns=["first", "second", "share"])
     structure = _choices(frame, "structure", _STRUCTURES)
     facet = _choices(frame, "facet", _FACETS)
+    for position, asked in enumerate(zip(parts, structure, facet, strict=True)):
+        _check_structure(position, *asked)
     openness = [
         _openness(first, s, f) for first, s, f in zip(rows["first"], structure, facet, strict=True)
     ]
@@ -105,6 +112,34 @@ def _choices(frame: pd.DataFrame, column: str, known: tuple[str, ...]) -> list[s
                 )
             )
     return texts
+
+
+def _check_structure(
+    position: int, parts: tuple[str, str, float], structure: str, facet: str
+) -> None:
+    """Refuse a structure that the metal does not have, and a face that the structure does not."""
+    first, second, share = parts
+    fitting = {close_packed_structure(first), "fcc"}
+    if first != second:
+        fitting |= {name for name, x in _ORDERED.items() if abs(share - x) < _SHARE_TOLERANCE}
+    if structure and structure not in fitting:
+        raise TableError(
+            explain(
+                f"structure does not fit {first}" + ("" if first == second else f" with {second}"),
+                where=f"row {position + 1}",
+                expected=f"one of {', '.join(sorted(fitting))}, or empty",
+                found=repr(structure),
+            )
+        )
+    owner = _FACE_OF.get(facet)
+    if owner and owner != (structure or owner):
+        raise TableError(
+            explain(
+                f"face {facet} belongs to {owner}",
+                where=f"row {position + 1}",
+                found=f"structure {structure!r}",
+            )
+        )
 
 
 def _openness(first: str, structure: str, facet: str) -> float:

@@ -1,4 +1,4 @@
-"""Candidates of the catalyst track: metal or alloy x shape x diameter, with reasons for refusals."""
+"""Candidates of the catalyst track: metal or alloy, shape and diameter; refusals with reasons."""
 
 from typing import TYPE_CHECKING
 

@@ -11,119 +11,21 @@ from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
-from scipy.constants import Avogadro
 from scipy.special import ndtr
 
-from features.elements import element_table
-from features.formula import parse_formula
-from features.particle_metal import MetalLattice, metal_lattice
-from features.particle_sites import resolved_counts
-from features.particle_steps import most_step_sites
 from screening.adsorption import AdsorptionModel
+from screening.catalyst_sites import ParticleSites, particle_sites
 from screening.covariance import FloatArray
 from screening.site_levels import Draws, SiteLevel, site_level
 from screening.volcano import SurfaceQuestion
 
-__all__ = [
-    "REFERENCE_PARTICLE",
-    "ParticleSites",
-    "particle_sites",
-    "score_particles",
-    "site_name",
-]
+__all__ = ["REFERENCE_PARTICLE", "score_particles"]
 
 REFERENCE_PARTICLE = ("Pt", "truncated_octahedron", 3.0)
 """Particle to which relative volcano activities refer: metal, shape, diameter in nm."""
 
 _NORMAL_90 = 1.6448536269514722
 _SIZES_AT_ONCE = 64
-_STEP_SITE = "step (B5)"
-# area of an atom in the close-packed plane over the squared distance of neighbours
-_ATOM_AREA = {"fcc": 0.75**0.5, "hcp": 0.75**0.5, "bcc": 8.0**0.5 / 3.0}
-
-
-@dataclass(frozen=True)
-class ParticleSites:
-    """Sites of particles of one metal and shape at some sizes.
-
-    Attributes
-    ----------
-    names : tuple of str
-        Kind of each column, several columns may share one.
-    n_sites, coordination : ndarray, shape (n_sizes, n_columns)
-        Sites and their generalised coordination.
-    n_atoms, n_surface : ndarray, shape (n_sizes,)
-    umol_per_g, umol_per_m2 : ndarray, shape (n_sizes,)
-        What one site a particle amounts to.
-    """
-
-    names: tuple[str, ...]
-    n_sites: FloatArray
-    coordination: FloatArray
-    n_atoms: FloatArray
-    n_surface: FloatArray
-    umol_per_g: FloatArray
-    umol_per_m2: FloatArray
-
-
-def site_name(site: str, facet: str, coordination: int) -> str:
-    """Return a kind of site in words.
-
-    Examples
-    --------
-    >>> site_name("terrace", "(111)", 9)
-    '(111) terrace, 9 neighbours'
-    """
-    return f"{facet} {site}, {coordination} neighbours"
-
-
-def _molar_mass_g(material: str) -> float:
-    masses = element_table()["mass_u"]
-    return float(sum(x * masses[e] for e, x in parse_formula(material).fractions.items()))
-
-
-def _atom_area_m2(metal: MetalLattice) -> float:
-    return float(_ATOM_AREA[metal.structure] * (1e-9 * metal.nearest_distance_nm) ** 2)
-
-
-def particle_sites(
-    material: str, shape: str, diameter_nm: FloatArray, *, is_step: bool = False
-) -> ParticleSites:
-    """Count the sites of particles of one metal and shape.
-
-    Parameters
-    ----------
-    material, shape : str
-    diameter_nm : ndarray, shape (n_sizes,)
-    is_step : bool, default False
-        Only step sites, of the greatest number that islands on the facets can make.
-
-    Returns
-    -------
-    ParticleSites
-
-    Raises
-    ------
-    PhysicsRangeError
-        If the shape does not fit the metal or a size is out of range.
-    """
-    metal = metal_lattice(material)
-    counts = resolved_counts(material, shape, diameter_nm)
-    names = tuple(site_name(c.site, c.facet, c.coordination) for c in counts.classes)
-    n_sites, coordination = counts.n_sites, counts.generalised_coordination
-    if is_step:
-        names, n_sites = (_STEP_SITE,), most_step_sites(material, shape, diameter_nm)[:, None]
-        coordination = np.full_like(n_sites, np.nan)
-    surface_m2 = counts.n_surface * _atom_area_m2(metal)
-    return ParticleSites(
-        names,
-        n_sites,
-        coordination,
-        counts.n_atoms,
-        counts.n_surface,
-        1e6 / (counts.n_atoms * _molar_mass_g(material)),
-        1e6 / (Avogadro * surface_m2),
-    )
 
 
 @dataclass(frozen=True)
@@ -155,9 +57,10 @@ def _descriptors(
 
 
 def _chance(found: _Descriptors, level: SiteLevel, question: SurfaceQuestion) -> FloatArray:
-    """Return each site's chance: the metal's calibrated error, normal errors folded in closed form."""
+    """Return each site's chance: normal errors in closed form about draws of the metal's own."""
     low, high = question.window_eV
-    sd = np.hypot(np.hypot(found.slope_sd, found.own_sd), max(question.shared_sd_eV, 1e-6))
+    sd = np.hypot(found.slope_sd, found.own_sd)
+    sd = np.hypot(sd, max(question.shared_sd_eV, 1e-6))
     mean = found.centre[:, :, None] + (level.error_eV - level.reference_error_eV)
     inside = ndtr((high - mean) / sd[:, :, None]) - ndtr((low - mean) / sd[:, :, None])
     return np.asarray(inside.mean(axis=2))
@@ -204,24 +107,6 @@ def _best_kind(
     }
 
 
-def _block(
-    sites: ParticleSites, level: SiteLevel, question: SurfaceQuestion, draws: Draws
-) -> pd.DataFrame:
-    found = _descriptors(sites, level, question, draws)
-    chance = _chance(found, level, question)
-    frame = pd.DataFrame(_best_kind(sites, chance, found))
-    low, high = question.window_eV
-    inside = (found.draws >= low) & (found.draws <= high)
-    spread = _quantiles(np.einsum("sc,scd->sd", sites.n_sites, inside.astype(np.float64)))
-    expected = (sites.n_sites * chance).sum(axis=1)
-    for per, unit in (("umol_per_g", sites.umol_per_g), ("umol_per_m2", sites.umol_per_m2)):
-        frame[f"sites_in_window_{per}"] = expected * unit
-        frame[f"sites_in_window_low_{per}"] = spread[0] * unit
-        frame[f"sites_in_window_high_{per}"] = spread[2] * unit
-    frame["atoms"], frame["dispersion"] = sites.n_atoms, sites.n_surface / sites.n_atoms
-    return frame
-
-
 def _energies(frame: pd.DataFrame, level: SiteLevel, question: SurfaceQuestion) -> pd.DataFrame:
     """Add the adsorption energy of the best site, its free energy and the descriptor's interval."""
     shift = frame["descriptor_eV"] - level.descriptor_eV
@@ -262,13 +147,8 @@ def _reference(model: AdsorptionModel, question: SurfaceQuestion, draws: Draws) 
 
 
 def _relative_activity(
-    sites: ParticleSites,
-    level: SiteLevel,
-    question: SurfaceQuestion,
-    draws: Draws,
-    reference: _Reference,
-) -> pd.DataFrame:
-    found = _descriptors(sites, level, question, draws)
+    sites: ParticleSites, found: _Descriptors, question: SurfaceQuestion, reference: _Reference
+) -> dict[str, FloatArray]:
     total = _activity(found, sites, question)
     columns = {}
     for per, unit, own in (
@@ -279,22 +159,46 @@ def _relative_activity(
         columns[f"relative_volcano_activity_per_{per}"] = middle
         columns[f"relative_volcano_activity_low_per_{per}"] = low
         columns[f"relative_volcano_activity_high_per_{per}"] = high
-    return pd.DataFrame(columns)
+    return columns
+
+
+def _block(
+    sites: ParticleSites,
+    level: SiteLevel,
+    question: SurfaceQuestion,
+    draws: Draws,
+    reference: _Reference | None,
+) -> pd.DataFrame:
+    """Score the sizes of one metal and shape."""
+    found = _descriptors(sites, level, question, draws)
+    chance = _chance(found, level, question)
+    frame = pd.DataFrame(_best_kind(sites, chance, found))
+    frame["atoms"], frame["dispersion"] = sites.n_atoms, sites.n_surface / sites.n_atoms
+    frame = frame.assign(**_in_window(sites, found, chance, question))
+    if reference is not None:
+        frame = frame.assign(**_relative_activity(sites, found, question, reference))
+    return frame
+
+
+def _in_window(
+    sites: ParticleSites, found: _Descriptors, chance: FloatArray, question: SurfaceQuestion
+) -> dict[str, FloatArray]:
+    low, high = question.window_eV
+    inside = (found.draws >= low) & (found.draws <= high)
+    spread = _quantiles(np.einsum("sc,scd->sd", sites.n_sites, inside.astype(np.float64)))
+    expected = (sites.n_sites * chance).sum(axis=1)
+    columns = {}
+    for per, unit in (("umol_per_g", sites.umol_per_g), ("umol_per_m2", sites.umol_per_m2)):
+        columns[f"sites_in_window_{per}"] = expected * unit
+        columns[f"sites_in_window_low_{per}"] = spread[0] * unit
+        columns[f"sites_in_window_high_{per}"] = spread[2] * unit
+    return columns
 
 
 def _slices(sites: ParticleSites) -> Iterator[ParticleSites]:
     """Yield the sizes in parts, so that draws of all sites fit into memory."""
     for start in range(0, len(sites.n_atoms), _SIZES_AT_ONCE):
-        part = slice(start, start + _SIZES_AT_ONCE)
-        yield ParticleSites(
-            sites.names,
-            sites.n_sites[part],
-            sites.coordination[part],
-            sites.n_atoms[part],
-            sites.n_surface[part],
-            sites.umol_per_g[part],
-            sites.umol_per_m2[part],
-        )
+        yield sites.part(slice(start, start + _SIZES_AT_ONCE))
 
 
 def score_particles(
@@ -326,13 +230,7 @@ def score_particles(
         sizes = rows["diameter_nm"].to_numpy(dtype=np.float64)
         sites = particle_sites(str(material), str(shape), sizes, is_step=question.is_step)
         level = levels[material]
-        frames = [_block(part, level, question, draws) for part in _slices(sites)]
+        frames = [_block(part, level, question, draws, reference) for part in _slices(sites)]
         frame = _energies(pd.concat(frames, ignore_index=True), level, question)
-        if reference is not None:
-            activity = [
-                _relative_activity(part, level, question, draws, reference)
-                for part in _slices(sites)
-            ]
-            frame = frame.join(pd.concat(activity, ignore_index=True))
         parts.append(frame.set_index(rows.index))
     return grid.join(pd.concat(parts))

@@ -5,6 +5,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import pandas as pd
 
+from features.errors import NothingQualifiesError, explain
 from features.formula import parse_formula
 from features.hazards import caution_text
 from screening.adsorption import AdsorptionModel
@@ -64,6 +65,7 @@ VOLCANO_COLUMNS = tuple(
 )
 """Columns more where a reaction is named, before record_state."""
 
+_UNMEASURED = "no adsorption energy on record, and unmeasured surfaces are not wanted"
 _TABULATED = frozenset({"tabulated surface", "tabulated composition"})
 
 
@@ -81,6 +83,7 @@ class CatalystTrack:
     """
 
     def __init__(self, specification: "Specification") -> None:
+        self.specification = specification
         self.question = _question(specification)
         self.columns: tuple[str, ...] = COLUMNS
         self.brief = {
@@ -99,32 +102,50 @@ class CatalystTrack:
             self.brief["relative_volcano_activity_per_mass"] = 2
         self.brief["record_state"] = 0
 
-    def check(self, specification: "Specification") -> None:
+    def check(self) -> None:
         """Refuse unknown adsorbates, metals and shapes, and sizes below 13 atoms."""
         check_adsorbates(self.question)
-        choose_particles(specification.candidates, self.question)
+        choose_particles(self.specification.candidates, self.question)
 
-    def model(self, specification: "Specification") -> AdsorptionModel:
+    def model(self) -> AdsorptionModel:
         """Return the model, learned now or rebuilt from what was kept."""
         return trained_surfaces()
 
-    def model_hash(self, specification: "Specification") -> str:
+    def model_hash(self) -> str:
         """Return the hash of all that the model follows from."""
         return surface_fingerprint()
 
-    def candidates(
-        self, specification: "Specification", model: AdsorptionModel
-    ) -> tuple[pd.DataFrame, pd.DataFrame]:
+    def candidates(self, model: AdsorptionModel) -> tuple[pd.DataFrame, pd.DataFrame]:
         """Return every metal and shape at every diameter, and the refused ones."""
-        self.check(specification)
-        chosen, refused = choose_particles(specification.candidates, self.question)
-        return particle_grid(chosen, specification.candidates), refused
+        self.check()
+        chosen, refused = choose_particles(self.specification.candidates, self.question)
+        if not self.specification.candidates.unmeasured:
+            chosen, refused = self._measured(model, chosen, refused)
+        return particle_grid(chosen, self.specification.candidates), refused
 
-    def score(
-        self, specification: "Specification", model: AdsorptionModel, grid: pd.DataFrame
-    ) -> pd.DataFrame:
+    def _measured(
+        self, model: AdsorptionModel, chosen: pd.DataFrame, refused: pd.DataFrame
+    ) -> tuple[pd.DataFrame, pd.DataFrame]:
+        """Keep what the tables hold for every adsorbate of the question."""
+        names = chosen["material"].unique().tolist()
+        held = set(names)
+        for adsorbate in self.question.adsorbates:
+            states = model.predict_surfaces(
+                pd.DataFrame({"material": names, "adsorbate": adsorbate})
+            )["record_state"]
+            held &= {n for n, s in zip(names, states, strict=True) if s in _TABULATED}
+        out = [n for n in names if n not in held]
+        reasons = pd.DataFrame({"material": out, "reason": _UNMEASURED})
+        if not held:
+            raise NothingQualifiesError(
+                explain("no metal is left", where="candidates.unmeasured", found=_UNMEASURED)
+            )
+        kept = chosen[chosen["material"].isin(held)].reset_index(drop=True)
+        return kept, pd.concat([refused, reasons], ignore_index=True)
+
+    def score(self, model: AdsorptionModel, grid: pd.DataFrame) -> pd.DataFrame:
         """Return energies, chance, sites in the window and relative volcano activity."""
-        return score_particles(model, grid, self.question, specification.seed)
+        return score_particles(model, grid, self.question, self.specification.seed)
 
     def order(self, scored: pd.DataFrame) -> tuple[pd.DataFrame, list[bool]]:
         """Sort by relative volcano activity per mass, or by sites in the window per gram."""
@@ -145,7 +166,11 @@ class CatalystTrack:
         )
         return keys, [False, False, True, True, True]
 
-    def finish(self, best: pd.DataFrame, model: AdsorptionModel) -> pd.DataFrame:
+    def finish(
+        self,
+        best: pd.DataFrame,
+        model: AdsorptionModel,  # noqa: ARG002 - the form that tracks share
+    ) -> pd.DataFrame:
         """Add the cautions; the nearest source comes with the energies."""
         return best.assign(
             cautions=[caution_text(dict(parse_formula(m).amounts)) for m in best["material"]]
@@ -170,7 +195,11 @@ class CatalystTrack:
 
         return draw_sizes(result, ax)
 
-    def sections(self, result: "RankResult", evidence: pd.DataFrame) -> Sections:
+    def sections(
+        self,
+        result: "RankResult",
+        evidence: pd.DataFrame,  # noqa: ARG002 - the form that tracks share
+    ) -> Sections:
         """Return the parts of the report on metal particles."""
         from screening.reporting.catalyst_sections import (  # noqa: PLC0415 - figures load slowly
             catalyst_sections,

@@ -26,10 +26,17 @@ __all__ = ["EmissionTrack"]
 
 
 class EmissionTrack:
-    """Quantum dots: see `screening.tracks.Track`."""
+    """Quantum dots: see `screening.tracks.Track`.
 
-    def __init__(self, kept: Path | None = None) -> None:
-        self.kept = kept
+    Parameters
+    ----------
+    specification : Specification
+    kept : pathlib.Path or None, default None
+        Folder for the finished blocks of a sweep.
+    """
+
+    def __init__(self, specification: "Specification", kept: Path | None = None) -> None:
+        self.specification, self.kept = specification, kept
         self.counts: SweepCounts | None = None
         self.columns: tuple[str, ...] = COLUMNS
         self.brief = {
@@ -44,42 +51,37 @@ class EmissionTrack:
             "record_state": 0,
         }
 
-    def check(self, specification: "Specification") -> None:
+    def check(self) -> None:
         """Refuse unknown materials and families."""
-        wanted = specification.candidates
+        wanted = self.specification.candidates
         if not wanted.spaces or wanted.materials or wanted.families:
             choose_materials(wanted, training_rows()["material"])
 
-    def model(self, specification: "Specification") -> SizeGapModel:
+    def model(self) -> SizeGapModel:
         """Return the model, learned now or rebuilt from what was kept."""
-        return trained_dots(specification.seed)
+        return trained_dots(self.specification.seed)
 
-    def model_hash(self, specification: "Specification") -> str:
+    def model_hash(self) -> str:
         """Return the hash of all that the model follows from."""
-        return dot_fingerprint(specification.seed)
+        return dot_fingerprint(self.specification.seed)
 
-    def candidates(
-        self, specification: "Specification", model: SizeGapModel
-    ) -> tuple[pd.DataFrame, pd.DataFrame]:
+    def candidates(self, model: SizeGapModel) -> tuple[pd.DataFrame, pd.DataFrame]:
         """Return every material at every diameter, and the refused materials.
 
         With candidate spaces only the materials that the shortlist will hold, found by a sweep.
         """
-        wanted = specification.candidates
+        wanted = self.specification.candidates
         materials, refused = _named_materials(wanted, model)
         if wanted.spaces:
-            materials, refused = self._swept(specification, model, materials, refused)
+            materials, refused = self._swept(model, materials, refused)
         return candidate_grid(materials, wanted), refused
 
     def _swept(
-        self,
-        specification: "Specification",
-        model: SizeGapModel,
-        named: list[str],
-        refused: pd.DataFrame,
+        self, model: SizeGapModel, named: list[str], refused: pd.DataFrame
     ) -> tuple[list[str], pd.DataFrame]:
-        key = text_hash(specification.model_dump_json() + self.model_hash(specification))
-        sweep = Sweep(specification, model, self, self.kept, key)
+        rows = model.rows_[["material", "diameter_nm", "optical_gap_eV"]].to_csv()
+        key = text_hash(self.specification.model_dump_json() + self.model_hash() + rows)
+        sweep = Sweep(self.specification, model, self, self.kept, key)
         found = sweep.run(named)
         self.counts = sweep.counts
         if not found:
@@ -94,16 +96,15 @@ class EmissionTrack:
             )
         return found, pd.concat([refused, _sweep_refusals(sweep.counts, len(found))])
 
-    def score(
-        self, specification: "Specification", model: SizeGapModel, grid: pd.DataFrame
-    ) -> pd.DataFrame:
-        """Return gap, emission, linewidth, chance, fraction and tolerance."""
-        low, high = specification.target.energies_eV
-        window = Window(specification.target.quantity, low, high)
-        sizes = specification.laboratory.size_shape()
+    def score(self, model: SizeGapModel, grid: pd.DataFrame) -> pd.DataFrame:
+        """Return gap, emission, linewidth, chance, fraction, tolerance and yield."""
+        low, high = self.specification.target.energies_eV
+        window = Window(self.specification.target.quantity, low, high)
+        laboratory = self.specification.laboratory
+        sizes = laboratory.size_shape()
         described = describe(model, grid, sizes)
-        scored = score(model, described, window, sizes, specification.laboratory.least_fraction)
-        scored["size_spread_needed"] = _spread_needed(scored, specification)
+        scored = score(model, described, window, sizes, laboratory.least_fraction)
+        scored["size_spread_needed"] = _spread_needed(scored, self.specification)
         return scored
 
     def order(self, scored: pd.DataFrame) -> tuple[pd.DataFrame, list[bool]]:

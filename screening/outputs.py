@@ -21,6 +21,7 @@ from screening.fingerprint import file_hash, package_version
 
 __all__ = [
     "SCHEMA_VERSION",
+    "UNFINISHED",
     "build_manifest",
     "csv_text",
     "json_text",
@@ -30,9 +31,11 @@ __all__ = [
 ]
 
 SCHEMA_VERSION = 1
-_UNITS = ("_eV_per_nm", "_eV", "_meV", "_nm", "_K")
+_UNITS = ("_eV_per_nm", "_umol_per_g", "_umol_per_m2", "_eV", "_meV", "_nm", "_K")
 _RISKY = ("=", "+", "-", "@", "\t", "\r")
 _PROOF = "manifest.json"
+UNFINISHED = ".unfinished"
+"""Folder inside the output folder that holds the finished blocks of a run under way."""
 
 
 def prepare_folder(folder: Path, *, overwrite: bool) -> Path:
@@ -56,7 +59,7 @@ def prepare_folder(folder: Path, *, overwrite: bool) -> Path:
     try:
         if folder.exists() and not folder.is_dir():
             raise OutputError(explain("the output is not a folder", where=str(folder)))
-        if folder.is_dir() and any(folder.iterdir()):
+        if folder.is_dir() and any(entry.name != UNFINISHED for entry in folder.iterdir()):
             _check_overwrite(folder, overwrite=overwrite)
         folder.mkdir(parents=True, exist_ok=True)
     except OSError as error:

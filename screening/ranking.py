@@ -1,6 +1,7 @@
 """The main job: a specification in, a ranked shortlist with its evidence out."""
 
 from dataclasses import dataclass
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -114,7 +115,7 @@ class RankResult:
         return str(self.shortlist.to_html(index=False, escape=True, float_format="{:.3f}".format))
 
 
-def rank(specification: "Specification", model: Any) -> RankResult:
+def rank(specification: "Specification", model: Any, kept: Path | None = None) -> RankResult:
     """Rank the candidates of a specification.
 
     Parameters
@@ -122,6 +123,8 @@ def rank(specification: "Specification", model: Any) -> RankResult:
     specification : Specification
     model : SizeGapModel or AdsorptionModel
         Of the specification's track, fitted and calibrated.
+    kept : pathlib.Path or None, default None
+        Folder in which a sweep keeps its finished blocks, to be taken up by the same run.
 
     Returns
     -------
@@ -134,9 +137,9 @@ def rank(specification: "Specification", model: Any) -> RankResult:
     NothingQualifiesError
         If no candidate reaches the least chance.
     """
-    track = track_of(specification)
-    grid, refused = track.candidates(specification, model)
-    scored = track.score(specification, model, grid)
+    track = track_of(specification, kept)
+    grid, refused = track.candidates(model)
+    scored = track.score(model, grid)
     judgement = judge(scored, specification.limits)
     scored["is_allowed"] = judgement.allowed
     allowed = scored[judgement.allowed]

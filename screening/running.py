@@ -1,18 +1,20 @@
 """One run from specification to files."""
 
 import json
+from contextlib import suppress
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 import pandas as pd
 
-from features.errors import SpecificationError, explain
+from features.errors import NothingQualifiesError, SpecificationError, explain
 from features.tables import read_table
 from screening.fingerprint import file_hash, text_hash
 from screening.laboratory import join_results
 from screening.measurements import read_measurements
 from screening.outputs import (
+    UNFINISHED,
     build_manifest,
     csv_text,
     json_text,
@@ -85,7 +87,12 @@ def run_rank(
     """
     from screening.reporting.report import render_report  # noqa: PLC0415 - figures load slowly
 
-    result = ranked(specification, results)
+    kept = folder / UNFINISHED
+    try:
+        result = ranked(specification, results, kept)
+    except NothingQualifiesError:
+        _forget(kept)
+        raise
     table = csv_text(result.shortlist)
     prepare_folder(folder, overwrite=overwrite)
     write_atomically(folder / "shortlist.csv", table)
@@ -107,16 +114,32 @@ def run_rank(
     report = render_report(result, manifest, held_out_figures())
     write_atomically(folder / "report.html", report)
     write_atomically(folder / "manifest.json", json.dumps(manifest, indent=2, ensure_ascii=False))
+    _forget(kept)
     return RankRun(result, folder, manifest)
 
 
-def ranked(specification: Specification, results: Path | None = None) -> RankResult:
+def _forget(kept: Path) -> None:
+    """Remove the finished blocks of a run that is over, and a folder that holds nothing else."""
+    if not kept.is_dir():
+        return
+    for file in kept.glob("*.npz"):
+        file.unlink()
+    with suppress(OSError):
+        kept.rmdir()
+        kept.parent.rmdir()
+
+
+def ranked(
+    specification: Specification, results: Path | None = None, kept: Path | None = None
+) -> RankResult:
     """Rank a specification, with own results joined where there are any.
 
     Parameters
     ----------
     specification : Specification
     results : pathlib.Path or None, default None
+    kept : pathlib.Path or None, default None
+        As for `screening.ranking.rank`.
 
     Returns
     -------
@@ -130,9 +153,9 @@ def ranked(specification: Specification, results: Path | None = None) -> RankRes
     """
     # What cannot be ranked is said before a model is trained for it.
     track = track_of(specification)
-    track.check(specification)
+    track.check()
     if results is None:
-        return rank(specification, track.model(specification))
+        return rank(specification, track.model(), kept)
     if specification.target.quantity not in {"emission", "optical_gap"}:
         raise SpecificationError(
             explain(
@@ -142,15 +165,15 @@ def ranked(specification: Specification, results: Path | None = None) -> RankRes
             )
         )
     measured = read_measurements(results)
-    model = track.model(specification)
+    model = track.model()
     update = join_results(model, measured)
     before = rank(specification, model).shortlist
-    return replace(rank(specification, update.model), update=update, before=before)
+    return replace(rank(specification, update.model, kept), update=update, before=before)
 
 
 def model_hash(specification: Specification, results: Path | None = None) -> str:
     """Return the hash of all that the model of a run follows from, own results included."""
-    plain = track_of(specification).model_hash(specification)
+    plain = track_of(specification).model_hash()
     return plain if results is None else text_hash(plain + file_hash(results))
 
 

@@ -4,9 +4,11 @@ from pathlib import Path
 
 import pandas as pd
 
-from features.errors import FewnmError
+from features.errors import FewnmError, TableError, explain
 from features.particle import site_table
+from features.particle_metal import metal_lattice
 from screening.adsorption import AdsorptionModel, adsorption_model
+from screening.catalyst_candidates import USUAL_SHAPES
 from screening.user_tables import collect_faults, numeric_column, read_user_table
 
 __all__ = ["answer_surfaces"]
@@ -60,7 +62,8 @@ def _row_faults(model: AdsorptionModel, frame: pd.DataFrame) -> list[str]:
         try:
             model.predict_surfaces(frame.iloc[[position]])
         except FewnmError as error:
-            faults.append(f"row {position + 2}: {error}")
+            # asked alone every row is the first; its place in the table is what helps
+            faults.append(f"row {position + 2}: {str(error).replace(' at row 1', '', 1)}")
     return faults
 
 
@@ -83,9 +86,27 @@ def _particles(where: str, model: AdsorptionModel, frame: pd.DataFrame) -> pd.Da
 
 def _sites(model: AdsorptionModel, row: dict[str, object]) -> pd.DataFrame:
     """Return one row a site class of one particle."""
-    material, shape = str(row["material"]), row["shape"] or "truncated octahedron"
-    sites = site_table(material, str(shape), float(str(row["diameter_nm"])))
+    material, own = str(row["material"]), metal_lattice(str(row["material"])).structure
+    _check_structure(material, row.get("structure"), own)
+    shape = USUAL_SHAPES[own] if _is_empty(row["shape"]) else str(row["shape"])
+    sites = site_table(material, shape, float(str(row["diameter_nm"])))
     energies = model.predict_sites(material, str(row["adsorbate"]), sites)
     asked = {"material": material, "shape": shape, "diameter_nm": row["diameter_nm"]}
     head = pd.DataFrame([asked | {"adsorbate": row["adsorbate"]}] * len(sites))
     return pd.concat([head, sites, energies], axis=1)
+
+
+def _is_empty(cell: object) -> bool:
+    return cell is None or cell == "" or cell != cell  # noqa: PLR0124 - a missing cell is no number
+
+
+def _check_structure(material: str, structure: object, own: str) -> None:
+    """Refuse a particle of another structure than the metal's."""
+    if not _is_empty(structure) and structure != own:
+        raise TableError(
+            explain(
+                f"structure does not fit {material}",
+                expected=f"{own}, or empty",
+                found=repr(structure),
+            )
+        )

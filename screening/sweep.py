@@ -255,7 +255,7 @@ class Sweep:
 
     def _allowed(self, pairs: pd.DataFrame) -> pd.DataFrame:
         grid = pair_frame(pairs[["material", "diameter_nm"]].reset_index(drop=True))
-        scored = self.track.score(self.specification, self.model, grid)
+        scored = self.track.score(self.model, grid)
         self.counts.scored += len(scored)
         return scored[judge(scored, self.specification.limits).allowed]
 

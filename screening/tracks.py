@@ -5,6 +5,7 @@ orders, cuts and writes; a track says what its candidates are, how they are scor
 """
 
 from dataclasses import dataclass
+from pathlib import Path
 from typing import TYPE_CHECKING, Any, Protocol
 
 import pandas as pd
@@ -33,7 +34,7 @@ class Sections:
 
 
 class Track(Protocol):
-    """One kind of candidate.
+    """One kind of candidate, bound to a specification.
 
     Attributes
     ----------
@@ -46,21 +47,19 @@ class Track(Protocol):
     columns: tuple[str, ...]
     brief: dict[str, int]
 
-    def check(self, specification: "Specification") -> None:
+    def check(self) -> None:
         """Refuse what cannot be ranked, before a model is trained for it."""
 
-    def model(self, specification: "Specification") -> Any:
+    def model(self) -> Any:
         """Return the trained model."""
 
-    def model_hash(self, specification: "Specification") -> str:
+    def model_hash(self) -> str:
         """Return the hash of all that the model follows from."""
 
-    def candidates(
-        self, specification: "Specification", model: Any
-    ) -> tuple[pd.DataFrame, pd.DataFrame]:
+    def candidates(self, model: Any) -> tuple[pd.DataFrame, pd.DataFrame]:
         """Return the grid of candidates, and the refused materials with reasons."""
 
-    def score(self, specification: "Specification", model: Any, grid: pd.DataFrame) -> pd.DataFrame:
+    def score(self, model: Any, grid: pd.DataFrame) -> pd.DataFrame:
         """Return the grid with every score, chance_in_window among them."""
 
     def order(self, scored: pd.DataFrame) -> tuple[pd.DataFrame, list[bool]]:
@@ -79,8 +78,19 @@ class Track(Protocol):
         """Return the track's parts of the report."""
 
 
-def track_of(specification: "Specification") -> Track:
-    """Return the track that a specification's target belongs to."""
+def track_of(specification: "Specification", kept: Path | None = None) -> Track:
+    """Return the track of a specification's target, bound to the specification.
+
+    Parameters
+    ----------
+    specification : Specification
+    kept : pathlib.Path or None, default None
+        Folder in which a sweep keeps its finished blocks.
+
+    Returns
+    -------
+    Track
+    """
     from screening.surface_target import SurfaceTarget  # noqa: PLC0415 - each track loads its own
 
     if isinstance(specification.target, SurfaceTarget):
@@ -89,4 +99,4 @@ def track_of(specification: "Specification") -> Track:
         return CatalystTrack(specification)
     from screening.emission_track import EmissionTrack  # noqa: PLC0415 - as above
 
-    return EmissionTrack()
+    return EmissionTrack(specification, kept)

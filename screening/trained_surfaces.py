@@ -13,7 +13,16 @@ from screening.fingerprint import model_fingerprint
 from screening.outputs import write_atomically
 from screening.trained import cache_folder
 
-__all__ = ["SURFACE_TABLES", "surface_fingerprint", "trained_surfaces"]
+__all__ = [
+    "SURFACE_FORMAT",
+    "SURFACE_TABLES",
+    "surface_fingerprint",
+    "trained_surfaces",
+]
+
+SURFACE_FORMAT = 1
+"""Raised with every change of descriptors, terms or training that alters adsorption energies."""
+
 
 SURFACE_TABLES = (
     "adsorption_pure",
@@ -29,7 +38,7 @@ SURFACE_TABLES = (
 
 def surface_fingerprint() -> str:
     """Return the hash of what the model of adsorption energies follows from."""
-    return model_fingerprint(SURFACE_TABLES, {"track": "surfaces"})
+    return model_fingerprint(SURFACE_TABLES, {"track": "surfaces", "format": SURFACE_FORMAT})
 
 
 @lru_cache(maxsize=1)
@@ -54,7 +63,7 @@ def _restored(path: Path) -> AdsorptionModel | None:
     """Return the kept model, or None where the file is missing or holds something else."""
     try:
         return AdsorptionModel.restored(json.loads(path.read_text(encoding="utf-8")))
-    except (OSError, ValueError, KeyError, TypeError, AttributeError):
+    except (OSError, ValueError, LookupError, TypeError, AttributeError):
         return None
 
 

@@ -8,8 +8,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import pandas as pd
 
-from screening.catalyst_scores import particle_sites
+from features.particle_metal import metal_lattice
+from screening.catalyst_sites import particle_sites
 from screening.reporting.figures import COLOURS, MARKS, MOST_LINES, STYLES, clipped, new_axes
+from screening.reporting.site_styles import SITE_STYLES, site_kind
 from screening.surface_target import SurfaceTarget
 
 if TYPE_CHECKING:
@@ -17,8 +19,7 @@ if TYPE_CHECKING:
 
 __all__ = ["draw_sites", "draw_sizes", "site_numbers", "size_columns", "size_numbers"]
 
-_HATCHES = ("", "//", "..", "xx", "\\\\", "++", "oo", "--")
-_FILLS = ("#56B4E9", "#F0E442", "#E69F00", "#D55E00", "#CC79A7", "#009E73", "#0072B2", "#999999")
+_N_SIZES = 60
 
 
 def size_columns(result: "RankResult") -> tuple[str, str, str, str]:
@@ -79,7 +80,7 @@ def _of(frame: pd.DataFrame, material: str, shape: str) -> pd.DataFrame:
 
 
 def _decades(result: "RankResult", centre: str, low: str, high: str) -> tuple[float, float]:
-    """Return ends of the axis: the listed candidates, and the first one's band as far as it fits."""
+    """Return the axis' ends: the listed candidates, and the first one's band where it fits."""
     listed = result.shortlist
     first = listed.iloc[0]
     bottom = min(listed[centre].min(), max(first[low], 1e-3 * first[centre]))
@@ -93,20 +94,25 @@ def site_numbers(result: "RankResult") -> pd.DataFrame:
     Returns
     -------
     pandas.DataFrame
-        Column diameter_nm, then one a kind of site, in micromole per gram of metal.
+        Column diameter_nm, then one a kind of site (`screening.reporting.site_styles`), in
+        micromole per gram of metal.
     """
     first = result.shortlist.iloc[0]
     low, high = result.specification.candidates.diameter_nm
-    sizes = np.linspace(max(low, 1.0) if high > 1.0 else low, high, 60)
+    sizes = np.linspace(low, high, _N_SIZES) if high > low else np.array([low])
     target = result.specification.target
     assert isinstance(target, SurfaceTarget)
     sites = particle_sites(
         first["material"], first["shape"], sizes, is_step=target.question.is_step
     )
-    frame = pd.DataFrame(sites.n_sites * sites.umol_per_g[:, None], columns=list(sites.names))
-    summed = frame.T.groupby(level=0, sort=False).sum().T
-    summed.insert(0, "diameter_nm", sizes)
-    return summed
+    frame = pd.DataFrame({"diameter_nm": sizes})
+    structure = metal_lattice(first["material"]).structure
+    kinds = np.array([site_kind(structure, c.site, c.facet) for c in sites.classes])
+    for kind in SITE_STYLES:
+        own = kinds == kind
+        if own.any():
+            frame[kind] = sites.n_sites[:, own].sum(axis=1) * sites.umol_per_g
+    return frame
 
 
 def draw_sites(result: "RankResult", ax: Any = None) -> Any:
@@ -123,26 +129,26 @@ def draw_sites(result: "RankResult", ax: Any = None) -> Any:
     """
     ax = new_axes() if ax is None else ax
     numbers = site_numbers(result)
-    kinds = [name for name in numbers.columns if name != "diameter_nm"]
     base = np.zeros(len(numbers))
-    for position, kind in enumerate(kinds):
+    for kind in numbers.columns[1:]:
+        style = SITE_STYLES[kind]
         top = base + numbers[kind].to_numpy()
         ax.fill_between(
             numbers["diameter_nm"],
             base,
             top,
-            facecolor=_FILLS[position % len(_FILLS)],
-            hatch=_HATCHES[position % len(_HATCHES)],
-            edgecolor="black",
+            facecolor=style.fill,
+            hatch=style.hatch,
+            edgecolor=style.ink,
             linewidth=0.4,
-            label=kind,
+            label=style.words,
         )
         base = top
     first = result.shortlist.iloc[0]
     ax.axvline(first["diameter_nm"], color="black", linestyle="--", label="first candidate")
     ax.set_xlabel("Diameter (nm)")
-    ax.set_ylabel("Surface sites (µmol per g)")
-    ax.set_xlim(numbers["diameter_nm"].iloc[0], numbers["diameter_nm"].iloc[-1])
+    ax.set_ylabel("Sites (µmol per g)")
+    ax.set_xlim(*result.specification.candidates.diameter_nm)
     ax.set_ylim(0.0, 1.05 * float(base.max()))
     ax.legend(fontsize=8)
     return ax

@@ -5,6 +5,7 @@ from typing import Any
 import pandas as pd
 from markupsafe import Markup
 
+from features.formula import parse_formula
 from features.tables import read_table
 from screening.catalyst_scores import REFERENCE_PARTICLE
 from screening.ranking import RankResult
@@ -16,7 +17,8 @@ from screening.reporting.catalyst_figures import (
 )
 from screening.reporting.cells import cited, plain_rows, short
 from screening.reporting.figures import MOST_LINES, figure_svg
-from screening.reporting.particle_drawing import draw_particle
+from screening.reporting.particle_drawing import LARGEST_DRAWN_nm, draw_particle
+from screening.reporting.site_styles import SITE_STYLES
 from screening.surface_target import SurfaceTarget
 from screening.tracks import Sections
 from screening.volcano import SurfaceQuestion
@@ -156,7 +158,7 @@ def _site_caption(result: RankResult) -> str:
 def _site_table(result: RankResult) -> dict[str, Any]:
     """Return the numbers of the site map: head and rows, thinned."""
     numbers = site_numbers(result).iloc[::6]
-    kinds = [str(name) for name in numbers.columns if name != "diameter_nm"]
+    kinds = [SITE_STYLES[name].words for name in numbers.columns[1:]]
     rows = [
         {"diameter_nm": size, "amounts": list(amounts)}
         for size, *amounts in numbers.itertuples(index=False, name=None)
@@ -177,15 +179,17 @@ def _particle_svg(result: RankResult) -> str:
 
 def _particle_caption(result: RankResult, question: SurfaceQuestion) -> str:
     best = result.shortlist.iloc[0]
+    size = min(float(best["diameter_nm"]), LARGEST_DRAWN_nm)
+    drawn = "" if size == best["diameter_nm"] else f", drawn at {size:g} nm"
     steps = (
-        " Step sites lie at the rims of unfinished layers, which this perfect crystal does not show."
+        " Step sites lie at the rims of unfinished layers, not drawn on this perfect crystal."
         if question.is_step
         else ""
     )
     return (
-        f"{_name(best)}, drawn as the nearest particle of whole layers; most of the sites expected "
-        f"in the window are {best['best_site']} ({best['best_site_share']:.0%} of the surface "
-        f"atoms).{steps}"
+        f"{_name(best)}{drawn}, as the nearest particle of whole layers; numbers are its atoms by "
+        f"kind. Most of the sites expected in the window are {best['best_site']} "
+        f"({best['best_site_share']:.2f} a surface atom).{steps}"
     )
 
 
@@ -231,6 +235,4 @@ def _sources(result: RankResult, question: SurfaceQuestion) -> list[dict[str, An
 
 
 def _elements(material: str) -> list[str]:
-    from features.formula import parse_formula  # noqa: PLC0415 - only here
-
     return list(parse_formula(material).amounts)

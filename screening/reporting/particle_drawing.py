@@ -1,8 +1,4 @@
-"""A particle drawn atom by atom, its sites told apart by fill, edge and mark.
-
-Colours are those of Okabe and Ito, chosen to differ in lightness as well, and every kind of site
-carries a mark of its own, so that the picture reads in black and white.
-"""
+"""A particle drawn atom by atom, its sites told apart by fill and mark."""
 
 from typing import Any
 
@@ -12,46 +8,38 @@ from matplotlib.lines import Line2D
 from numpy.typing import NDArray
 
 from features.particle import nearest_particle
+from features.particle_metal import metal_lattice
 from features.particle_polyhedron import ExplicitParticle
 from screening.reporting.figures import new_axes
+from screening.reporting.site_styles import SITE_STYLES, site_kind
 
-__all__ = ["SITE_STYLES", "draw_particle"]
+__all__ = ["LARGEST_DRAWN_nm", "draw_particle"]
 
 FloatArray = NDArray[np.float64]
 
-SITE_STYLES = {
-    "terrace": ("#F0E442", "", "terrace"),
-    "open terrace": ("#56B4E9", "+", "terrace of an open facet"),
-    "edge": ("#D55E00", "_", "edge"),
-    "vertex": ("#1B1F24", "x", "vertex"),
-}
-"""Fill, mark and words of each kind of site."""
+LARGEST_DRAWN_nm = 6.0
+"""Larger particles are drawn at this size."""
 
 _VIEW = np.array([[0.94, 0.30, 0.16], [-0.34, 0.85, 0.40], [-0.016, -0.43, 0.90]])
-_CLOSE_PACKED = ("(111)", "(0001)", "(110)")
-_MARK_UP_TO = 900
-_INK_ON = {"vertex": "white"}
+_LAYERS_SHOWN = 2.2
+_MARK_UP_TO = 1500
+_BULK = "#7F7F7F"
+_MARKS_IN_FRONT = 0.45
 
 
-def _kinds(particle: ExplicitParticle) -> list[str]:
+def _kinds(particle: ExplicitParticle, structure: str) -> NDArray[np.str_]:
     """Return the kind of each surface atom, empty for an atom of the bulk."""
-    first = {c.facet for c in particle.classes if c.site == "terrace"} & set(_CLOSE_PACKED)
-    names = [
-        "open terrace" if c.site == "terrace" and first and c.facet not in first else c.site
-        for c in particle.classes
-    ]
-    return [names[i] if i >= 0 else "" for i in particle.class_index]
+    names = np.array([*(site_kind(structure, c.site, c.facet) for c in particle.classes), ""])
+    return np.asarray(names[particle.class_index])
 
 
-def _visible(positions: FloatArray, radius: float) -> NDArray[np.bool_]:
-    """Tell atoms that no nearer atom hides altogether."""
+def _in_front(positions: FloatArray) -> NDArray[np.bool_]:
+    """Tell atoms of the outermost layers that face the reader."""
     from scipy.spatial import cKDTree  # noqa: PLC0415 - scipy.spatial is slow to load
 
-    flat = cKDTree(positions[:, :2])
-    seen = np.ones(len(positions), dtype=np.bool_)
-    for i, near in enumerate(flat.query_ball_point(positions[:, :2], 0.3 * radius)):
-        seen[i] = positions[near, 2].max() - positions[i, 2] < 2.0 * radius
-    return seen
+    near = cKDTree(positions[:, :2]).query_ball_point(positions[:, :2], 0.9)
+    front = np.array([positions[rows, 2].max() for rows in near])
+    return np.asarray(positions[:, 2] > front - _LAYERS_SHOWN)
 
 
 def draw_particle(material: str, shape: str, diameter_nm: float, ax: Any = None) -> Any:
@@ -67,13 +55,13 @@ def draw_particle(material: str, shape: str, diameter_nm: float, ax: Any = None)
     -------
     matplotlib.axes.Axes
     """
-    ax = new_axes(6.4, 5.0) if ax is None else ax
-    particle = nearest_particle(material, shape, diameter_nm)
-    kinds = np.array(_kinds(particle))
+    ax = new_axes(6.4, 3.6) if ax is None else ax
+    particle = nearest_particle(material, shape, min(diameter_nm, LARGEST_DRAWN_nm))
+    kinds = _kinds(particle, metal_lattice(material).structure)
     view = np.linalg.qr(_VIEW.T)[0].T
     view = view * np.sign((view * _VIEW).sum(axis=1, keepdims=True))
     turned = particle.positions @ view.T
-    kept = np.flatnonzero((kinds != "") & _visible(turned, 0.5))
+    kept = np.flatnonzero(_in_front(turned))
     kept = kept[np.argsort(turned[kept, 2], kind="stable")]
     _draw_atoms(ax, turned[kept], kinds[kept])
     reach = float(np.abs(turned[:, :2]).max()) + 1.0
@@ -81,7 +69,14 @@ def draw_particle(material: str, shape: str, diameter_nm: float, ax: Any = None)
     ax.set_ylim(-reach, reach)
     ax.set_aspect("equal")
     ax.set_axis_off()
-    ax.legend(handles=_legend(kinds), loc="center left", bbox_to_anchor=(1.0, 0.5), frameon=False)
+    ax.legend(
+        handles=_legend(kinds),
+        loc="upper center",
+        bbox_to_anchor=(0.5, 0.0),
+        ncols=2,
+        frameon=False,
+        fontsize=8,
+    )
     return ax
 
 
@@ -89,7 +84,7 @@ def _draw_atoms(ax: Any, positions: FloatArray, kinds: NDArray[np.str_]) -> None
     """Draw discs from the farthest to the nearest, then the marks of those in front."""
     depth = positions[:, 2]
     shade = (depth - depth.min()) / max(float(np.ptp(depth)), 1e-9)
-    colours = [_shaded(SITE_STYLES[k][0], float(s)) for k, s in zip(kinds, shade, strict=True)]
+    colours = [_shaded(_fill(str(k)), float(s)) for k, s in zip(kinds, shade, strict=True)]
     ax.add_collection(
         EllipseCollection(
             np.ones(len(positions)),
@@ -105,36 +100,35 @@ def _draw_atoms(ax: Any, positions: FloatArray, kinds: NDArray[np.str_]) -> None
     )
     if len(positions) > _MARK_UP_TO:
         return
-    front = shade > 0.45
-    for kind, (_, mark, _) in SITE_STYLES.items():
+    front = shade > _MARKS_IN_FRONT
+    for kind, style in SITE_STYLES.items():
         rows = front & (kinds == kind)
-        if mark and rows.any():
-            ink = _INK_ON.get(kind, "black")
-            ax.plot(*positions[rows, :2].T, mark, color=ink, markersize=5, zorder=3)
+        if style.mark and rows.any():
+            ax.plot(*positions[rows, :2].T, style.mark, color=style.ink, markersize=5, zorder=3)
+
+
+def _fill(kind: str) -> str:
+    return SITE_STYLES[kind].fill if kind else _BULK
 
 
 def _shaded(colour: str, near: float) -> tuple[float, ...]:
     """Darken what lies farther back."""
     channels = np.array([int(colour[i : i + 2], 16) / 255.0 for i in (1, 3, 5)])
-    return tuple(channels * (0.55 + 0.45 * near))
+    return tuple(channels * (0.7 + 0.3 * near))
 
 
 def _legend(kinds: NDArray[np.str_]) -> list[Line2D]:
-    handles = []
-    for kind, (colour, mark, words) in SITE_STYLES.items():
-        n = int((kinds == kind).sum())
-        if not n:
-            continue
-        handles.append(
-            Line2D(
-                [],
-                [],
-                marker="o",
-                linestyle="",
-                markersize=11,
-                markerfacecolor=colour,
-                markeredgecolor="black",
-                label=f"{words} ({mark or 'no mark'}): {n} atoms",
-            )
+    return [
+        Line2D(
+            [],
+            [],
+            marker="o",
+            linestyle="",
+            markersize=11,
+            markerfacecolor=style.fill,
+            markeredgecolor="black",
+            label=f"{style.words} ({style.mark or 'no mark'}): {n}",
         )
-    return handles
+        for kind, style in SITE_STYLES.items()
+        if (n := int((kinds == kind).sum()))
+    ]

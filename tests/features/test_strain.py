@@ -45,7 +45,7 @@ def test_the_smaller_metal_is_stretched_and_the_larger_compressed(share):
     assert strain["Ni"] > 0.0 > strain["Pt"]
 
 
-def test_alloy_lattice_follows_the_measured_one_within_one_percent():
+def test_lattices_of_Pt3Ni_and_PdAu_are_the_measured_ones_within_one_percent():
     # Pt3Ni 0.3835 nm and PdAu 0.3985 nm, X-ray lattice constants, from memory; Vegard's law
     for material, lattice_nm in (("Pt3Ni", 0.3835), ("PdAu", 0.3985)):
         ours = metal_lattice(material).nearest_distance_nm * np.sqrt(2.0)
@@ -89,7 +89,7 @@ def test_stretching_and_missing_neighbours_raise_a_band_below_the_fermi_level(st
     assert shifted_d_band_centre_eV(-2.0, d_band_width_ratio(number, 9)) > -2.0
 
 
-def test_second_row_alloying_lowers_and_oversize_alloying_narrows_the_band_of_platinum():
+def test_alloying_with_nickel_or_cobalt_widens_the_d_band_of_platinum():
     # nickel and cobalt compress the lattice of Pt and widen its band: Stamenkovic et al., Nat.
     # Mater. 6, 241 (2007) found lower centres on Pt3Ni and Pt3Co (from memory)
     assert alloy_width_ratio("Pt3Ni")["Pt"] > 1.0

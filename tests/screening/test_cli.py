@@ -7,6 +7,7 @@ from pathlib import Path
 import pandas as pd
 import pytest
 
+HYDROGEN = "[target]\nreaction = 'hydrogen evolution'\n"
 SPEC = """
 [target]
 window_nm = [625, 635]
@@ -110,6 +111,28 @@ def test_an_earlier_run_is_not_overwritten_without_being_told(run):
             "no candidate qualifies",
         ),
         ("not toml", 4, "not a TOML file"),
+        ("[target]\nreaction = 'alchemy'\n", 4, "unknown reaction"),
+        ("[target]\nadsorbate = 'Xx'\nwindow_eV = [0, 1]\n", 4, "unknown adsorbate"),
+        (
+            "[target]\nreaction = 'hydrogen evolution'\n[candidates]\nmaterials = ['Xe']\n",
+            4,
+            "no surface data for this element",
+        ),
+        (
+            HYDROGEN + "[candidates]\nmaterials = ['Pt']\nshapes = ['rhombic_dodecahedron']\n",
+            4,
+            "shape of bcc metals",
+        ),
+        (
+            HYDROGEN + "[candidates]\nmaterials = ['Pt']\ndiameter_nm = [0.5, 3]\n",
+            4,
+            "13 atoms",
+        ),
+        (
+            HYDROGEN + "[candidates]\nmaterials = ['Pt']\nexclude_elements = ['Pt']\n",
+            5,
+            "no metal is left",
+        ),
     ],
 )
 def test_a_bad_specification_gives_one_message_its_code_and_writes_nothing(
@@ -172,6 +195,38 @@ def test_all_faulty_rows_of_a_table_are_reported_at_once(tmp_path):
     for row in ("row 2", "row 4", "row 5"):
         assert row in done.stderr
     assert done.stdout == ""
+
+
+def test_a_structure_that_a_metal_does_not_have_is_refused(tmp_path):
+    (tmp_path / "surfaces.csv").write_text(
+        "material,structure,facet,adsorbate\nPt,bcc,110,O\nPt,fcc,111,O\nPt,fcc,0001,O\n"
+    )
+    done = fewnm("predict", "--table", "surfaces.csv", cwd=tmp_path)
+    assert done.returncode == 3
+    assert "row 2: structure does not fit Pt" in done.stderr
+    assert "row 4: face 0001 belongs to hcp" in done.stderr
+    assert done.stdout == ""
+
+
+def test_particles_without_a_shape_take_the_usual_one(tmp_path):
+    (tmp_path / "sites.csv").write_text("material,adsorbate,diameter_nm\nRu,N,3\n")
+    done = fewnm("predict", "--table", "sites.csv", "--format", "csv", cwd=tmp_path)
+    assert done.returncode == 0, done.stderr
+    assert "truncated_hexagonal_bipyramid" in done.stdout
+
+
+def test_catalysts_are_ranked_by_the_same_command_with_the_same_files(tmp_path):
+    (tmp_path / "spec.toml").write_text(
+        "[target]\nreaction = 'oxygen reduction'\n"
+        "[candidates]\nmaterials = ['Pt', 'Pd']\nstep_nm = 0.5\n"
+    )
+    done = fewnm("rank", "spec.toml", "--out", "results", cwd=tmp_path)
+    assert done.returncode == 0, done.stderr
+    names = {p.name for p in (tmp_path / "results").iterdir()}
+    assert {"shortlist.csv", "shortlist.parquet", "shortlist.json", "rejected.csv"} < names
+    assert {"report.html", "manifest.json"} < names
+    listed = pd.read_csv(tmp_path / "results" / "shortlist.csv")
+    assert "relative_volcano_activity_per_mass" in listed
 
 
 def test_start_writes_a_specification_that_runs_and_keeps_an_existing_file(tmp_path):

@@ -44,6 +44,22 @@ def test_every_packaged_specification_is_valid(path):
             {"target": {"window_nm": [625, 635], "quantity": "colour"}},
             "'emission' or 'optical_gap'",
         ),
+        ({"target": {"window_nm": [625, 635], "quantity": "colour"}}, "adsorption_energy"),
+        ({"target": {"reaction": "x", "window_eV": [0, 1]}}, "leave out window_eV"),
+        ({"target": {"adsorbate": "O"}}, "adsorbate and window_eV together"),
+        ({"target": {"adsorbate": "O", "window_eV": [1, 0]}}, "upside down"),
+        ({"target": {"adsorbate": "O", "window_eV": [-20, 0]}}, "-10 to 10 eV"),
+        ({"target": {"adsorbate": "O", "window_ev": [0, 1]}}, "did you mean window_eV"),
+        (
+            {"target": {"quantity": "adsorption_energy", "window_nm": [600, 700]}},
+            "expected one of quantity, adsorbate, window_eV, reaction",
+        ),
+        (
+            {"target": {"reaction": "oxygen reduction"}, "candidates": {"families": ["III-V"]}},
+            "families is for quantum dots",
+        ),
+        ({"candidates": {"shapes": ["cube"]}}, "shapes is for metal particles"),
+        ({"candidates": {"diameter_nm": [1.0, 5]}}, "1.5 nm or more, where the model holds"),
         ({"candidates": {"diameter_nm": [-1, 5]}}, "where the model holds"),
         ({"candidates": {"diameter_nm": [2, 500]}}, "where the model holds"),
         ({"candidates": {"diameter_nm": [8, 2]}}, "where the model holds"),
@@ -58,6 +74,17 @@ def test_every_packaged_specification_is_valid(path):
 def test_a_fault_is_named_with_its_place(change, message):
     with pytest.raises(SpecificationError, match=message):
         parse_specification(GOOD | change, "mine.toml")
+
+
+def test_a_catalyst_window_may_be_negative_and_a_reaction_brings_its_own():
+    target = parse_specification({"target": {"adsorbate": "N", "window_eV": [-1, -0.5]}}).target
+    assert target.energies_eV == (-1.0, -0.5)
+    low, high = parse_specification(
+        {"target": {"reaction": "ammonia synthesis"}}
+    ).target.energies_eV
+    # top at -0.7 eV; a factor of ten at 673 K costs 0.134 eV over the slope of either leg
+    assert low == pytest.approx(-0.7 - 0.1336 / 0.26, abs=0.005)
+    assert high == pytest.approx(-0.7 + 0.1336 / 1.74, abs=0.005)
 
 
 def test_all_faults_are_reported_at_once():
