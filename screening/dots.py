@@ -45,6 +45,7 @@ _TERMS = (
     CovarianceTerm("shape", labels=(7,), scale=8, amplitude=0.2),
 )
 _N_GAUSSIAN = 9
+_SOURCE = 6
 _FEWEST_ROWS = 3
 
 
@@ -211,6 +212,18 @@ class SizeGapModel:
             },
             index=candidates.index,
         )
+
+    def design(self, candidates: pd.DataFrame) -> FloatArray:
+        """Return the regressor's columns of candidates, as of samples from no known source."""
+        return self._columns(candidates, training=False)[0]
+
+    def scatter_sd_eV(self, candidates: pd.DataFrame) -> FloatArray:
+        """Return the scatter between sources and samples of one pair, which no model narrows."""
+        gaussian = self.regressor_.gaussian_
+        fitted = gaussian.term_parameters()
+        between = sum(fitted[t.name].amplitude ** 2 for t in _TERMS if _SOURCE in t.labels)
+        scale = self._columns(candidates, training=False)[2]
+        return np.asarray(np.sqrt(between + gaussian.noise_**2) * scale, dtype=np.float64)
 
     def interval(
         self, predicted: pd.DataFrame, level: float = 0.9

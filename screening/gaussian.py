@@ -170,6 +170,22 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
             variance[rows] = np.diag(block) - noise[rows]
         return mean, np.sqrt(np.maximum(variance, 0.0))
 
+    def correlation(self, X: Any) -> FloatArray:
+        """Return the prior correlation of new rows with every training row.
+
+        Parameters
+        ----------
+        X : array-like of shape (n_rows, n_columns)
+
+        Returns
+        -------
+        ndarray of shape (n_rows, n_training_rows)
+        """
+        check_is_fitted(self)
+        X = validate_data(self, X, dtype=np.float64, reset=False)
+        spread = np.outer(self._prior_variance(X), self._prior_variance(self.X_))
+        return np.asarray(self._cross(X) / np.sqrt(spread))
+
     @property
     def noise_(self) -> float:
         """Fitted residual noise (standard deviation, unit of y)."""
