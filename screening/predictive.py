@@ -77,7 +77,9 @@ class Predictive:
             Column of the centre.
         """
         ends = [f"_{100 * level:.0f}_eV" for level in levels]
-        half = [(frame[f"high{end}"] - frame[f"low{end}"]).to_numpy(dtype=float) / 2 for end in ends]
+        half = [
+            (frame[f"high{end}"] - frame[f"low{end}"]).to_numpy(dtype=float) / 2 for end in ends
+        ]
         return cls(frame[mean].to_numpy(dtype=float), np.column_stack(half), tuple(levels))
 
     def take(self, rows: Any) -> "Predictive":
