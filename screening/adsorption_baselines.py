@@ -127,7 +127,9 @@ def _three(X: FloatArray, y: FloatArray, wanted: FloatArray) -> FloatArray:
     with threadpool_limits(1, user_api="openmp"), warnings.catch_warnings():
         # A length scale on its bound is part of what the plain tool gives.
         warnings.simplefilter("ignore", ConvergenceWarning)
-        trees = HistGradientBoostingRegressor(random_state=0, max_iter=60).fit(X, y)
+        trees = HistGradientBoostingRegressor(random_state=0, max_iter=60, min_samples_leaf=5).fit(
+            X, y
+        )
         process = plain_gaussian().fit(X, y)
         return np.column_stack([nearest, trees.predict(wanted), process.predict(wanted)])
 

@@ -20,6 +20,7 @@ from screening.covariance import FloatArray
 __all__ = ["Predictive", "interval_score"]
 
 _SMALLEST_STEP = 1e-9
+_FAR = 40.0
 
 
 def _square(n: FloatArray) -> FloatArray:
@@ -141,24 +142,22 @@ class Predictive:
 
         Parameters
         ----------
-        observed : array-like of shape (n_rows,)
+        observed : array-like of shape (n_rows,) or (n_rows, n_values)
 
         Returns
         -------
-        ndarray of shape (n_rows,)
+        ndarray of the shape of ``observed``
         """
         z, normal = self._nodes()
-        slope = np.diff(z, axis=1) / np.diff(normal)
+        inner = np.diff(z, axis=1) / np.diff(normal)
         tail = z[:, -1:] / normal[-1]
-        slope = np.hstack([tail, slope[:, ::-1], slope, tail])
-        inner = np.concatenate([-normal[::-1], normal[1:]])
-        at = ndtri(np.clip(self.cdf(observed), 1e-300, 1.0 - 1e-16))
-        edges = np.concatenate([[-40.0], inner, [40.0]])
-        low, high = edges[:-1], edges[1:]
-        split = np.clip(at[:, None], low, high)
-        below = _square(split) - _square(low)
-        above = _square(-split) - _square(-high)
-        return np.asarray(np.sum(slope * (below + above), axis=1))
+        slope = np.hstack([tail, inner[:, ::-1], inner, tail])
+        edges = np.concatenate([[-_FAR], -normal[::-1], normal[1:], [_FAR]])
+        truth = np.asarray(observed, dtype=np.float64)
+        at = ndtri(self.cdf(truth.reshape(len(self.mean), -1)))
+        split = np.clip(at[..., None], edges[:-1], edges[1:])
+        parts = _square(split) - _square(edges[:-1]) + _square(-split) - _square(-edges[1:])
+        return np.asarray(np.einsum("is,iks->ik", slope, parts).reshape(truth.shape))
 
     def _nodes(self) -> tuple[FloatArray, FloatArray]:
         """Return half widths with a leading zero, strictly rising, and their normal scores."""

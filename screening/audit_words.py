@@ -1,0 +1,268 @@
+"""What the audited figures say, in plain words and against what was promised.
+
+Everything here reads the table of figures only, so that a document made from packaged figures and
+the audit that measured them say the same.
+"""
+
+from dataclasses import dataclass
+
+import pandas as pd
+
+from screening.left_out import BASELINE
+
+__all__ = [
+    "LEFT_OUT",
+    "Target",
+    "distance_words",
+    "parsed",
+    "targets",
+    "under_coverage_words",
+    "verdicts",
+]
+
+LEFT_OUT = {
+    "random rows": "rows drawn at random",
+    "sources": "whole sources",
+    "size ranges": "size ranges of a material",
+    "materials": "whole materials",
+    "families": "whole families",
+    "metals": "whole metals",
+    "compositions": "whole compositions",
+    "elements": "whole elements",
+}
+"""What each split leaves out, in words."""
+
+_ENOUGH_PREDICTIONS = 20
+
+
+@dataclass(frozen=True)
+class Target:
+    """A promise, whether the figures keep it, and the figures."""
+
+    promise: str
+    reached: bool
+    found: str
+
+
+def parsed(figures: pd.DataFrame) -> pd.DataFrame:
+    """Take the names of figures apart.
+
+    Parameters
+    ----------
+    figures : pandas.DataFrame
+        As from `screening.audited.audited_figures`.
+
+    Returns
+    -------
+    pandas.DataFrame
+        With columns statistic, track, split and part more; rows of other tables are left out.
+    """
+    names = figures["figure"].str.split(", ", n=3, expand=True).reindex(columns=range(4))
+    names = names.set_axis(["statistic", "track", "split", "part"], axis=1)
+    frame = figures.join(names.fillna(""))
+    return frame[frame["split"].isin(list(LEFT_OUT))]
+
+
+def _one(figures: pd.DataFrame, statistic: str, split: str, state: str) -> pd.Series | None:
+    """Return a whole segment's figure, or None where it was not measured."""
+    chosen = figures["statistic"].eq(statistic) & figures["part"].eq("")
+    rows = figures[chosen & figures["split"].eq(split) & figures["state"].eq(state)]
+    return None if rows.empty else rows.iloc[0]
+
+
+def _segments(figures: pd.DataFrame) -> list[tuple[str, str, str]]:
+    keys = figures[["track", "split", "state"]].drop_duplicates()
+    return list(keys.itertuples(index=False, name=None))
+
+
+def verdicts(figures: pd.DataFrame) -> list[str]:
+    """Say for every segment whether the model beats the best baseline, by its paired lead.
+
+    Parameters
+    ----------
+    figures : pandas.DataFrame
+        As from `parsed`.
+
+    Returns
+    -------
+    list of str
+        One sentence a track, split and state that holds baselines.
+    """
+    sentences = []
+    for track, split, state in _segments(figures):
+        own = _one(figures, "mean_absolute_error_eV", split, state)
+        errors = _compared(figures, "error_eV of", split, state)
+        if own is not None and not errors.empty:
+            best = errors.loc[errors["value"].idxmin()]
+            name = best["statistic"].removeprefix(f"error_eV of {BASELINE}")
+            lead = _one(figures, f"lead_eV over {BASELINE}{name}", split, state)
+            assert lead is not None
+            sentences.append(
+                f"{track}, {split} left out ({state}): error {own['value']:.3f} eV; best baseline "
+                f"is {name} with {best['value']:.3f} eV; lead {lead['value']:.3f} eV "
+                f"({lead['low']:.3f} to {lead['high']:.3f}): {_judged(lead)}."
+            )
+    return sentences
+
+
+def _compared(figures: pd.DataFrame, start: str, split: str, state: str) -> pd.DataFrame:
+    named = figures["statistic"].str.startswith(f"{start} {BASELINE}")
+    return figures[named & figures["split"].eq(split) & figures["state"].eq(state)]
+
+
+def _judged(lead: pd.Series) -> str:
+    if lead["low"] > 0.0:
+        return "the model is better than every baseline"
+    if lead["high"] < 0.0:
+        return "the baseline is better than the model"
+    return "not told apart from zero"
+
+
+def under_coverage_words(figures: pd.DataFrame) -> list[str]:
+    """Name the sizes, families and adsorbates whose 90 % intervals hold too little.
+
+    Parameters
+    ----------
+    figures : pandas.DataFrame
+        As from `parsed`.
+
+    Returns
+    -------
+    list of str
+        One sentence a part whose exact binomial band lies below 90 %, or which holds less than
+        75 % on too few groups to tell.
+    """
+    rows = figures[figures["statistic"].eq("coverage_90")]
+    named = rows["part"].str.startswith(("family", "size", "adsorbate"))
+    rows = rows[(named | rows["part"].eq("")) & (rows["value"].lt(0.75) | rows["high"].lt(0.9))]
+    return [_under(row) for _, row in rows.iterrows()]
+
+
+def _under(row: pd.Series) -> str:
+    sure = row["high"] < 0.9
+    where = row["part"] or "all rows together"
+    tail = (
+        "intervals are too narrow there"
+        if sure
+        else f"{row['n_groups']:.0f} groups cannot tell this from chance"
+    )
+    return (
+        f"{row['track']}, {row['split']} left out ({row['state']}), {where}: the 90 % interval "
+        f"held {row['value']:.0%} ({row['low']:.0%} to {row['high']:.0%}); {tail}."
+    )
+
+
+def distance_words(figures: pd.DataFrame) -> list[str]:
+    """Say how the error grows with the distance to the data.
+
+    Parameters
+    ----------
+    figures : pandas.DataFrame
+        As from `parsed`.
+
+    Returns
+    -------
+    list of str
+        One sentence a segment in which more than one reach was met.
+    """
+    sentences = []
+    reach = figures[figures["part"].str.startswith("reach")]
+    for track, split, state in _segments(reach):
+        rows = reach[reach["split"].eq(split) & reach["state"].eq(state)]
+        errors = rows[rows["statistic"].eq("mean_absolute_error_eV")].set_index("part")
+        held = rows[rows["statistic"].eq("coverage_90")].set_index("part")
+        parts = [
+            f"{name} {errors.loc[f'reach {name}', 'value']:.3f} eV"
+            + (f" (90 % held {held.loc[f'reach {name}', 'value']:.0%})" if len(held) else "")
+            for name in ("near", "edge", "far")
+            if f"reach {name}" in errors.index
+        ]
+        sentences.append(f"{track}, {split} left out ({state}): error {', '.join(parts)}.")
+    return sentences
+
+
+def targets(figures: pd.DataFrame) -> list[Target]:
+    """Hold the figures against what the program promises.
+
+    Parameters
+    ----------
+    figures : pandas.DataFrame
+        As from `parsed`.
+
+    Returns
+    -------
+    list of Target
+        Promises that these figures can decide.
+    """
+    found = [
+        _coverage_target(figures, "size ranges", "on record", 0.87, 0.93),
+        _coverage_target(figures, "materials", "new", 0.85, 0.95),
+        _families_target(figures),
+    ]
+    found += [_windows_target(figures, *key) for key in _segments(figures)]
+    found += [
+        _lead_target(figures, split)
+        for split in ("materials", "metals", "compositions", "elements")
+    ]
+    return [target for target in found if target is not None]
+
+
+def _coverage_target(
+    figures: pd.DataFrame, split: str, state: str, low: float, high: float
+) -> Target | None:
+    row = _one(figures, "coverage_90", split, state)
+    if row is None:
+        return None
+    return Target(
+        f"90 % intervals hold {low:.0%} to {high:.0%}, {split} left out ({state})",
+        bool(low <= row["value"] <= high),
+        f"{row['value']:.1%} ({row['low']:.1%} to {row['high']:.1%}, {row['n_groups']:.0f} groups)",
+    )
+
+
+def _families_target(figures: pd.DataFrame) -> Target | None:
+    rows = figures[
+        figures["statistic"].eq("coverage_90") & figures["part"].str.startswith("family")
+    ]
+    rows = rows[rows["split"].eq("size ranges") & rows["state"].eq("on record")]
+    if rows.empty:
+        return None
+    worst = rows.loc[rows["value"].idxmin()]
+    return Target(
+        "no family below 75 % coverage at 90 %, size ranges left out (on record)",
+        bool(worst["value"] >= 0.75),
+        f"lowest: {worst['part']} with {worst['value']:.1%} on {worst['n_groups']:.0f} materials",
+    )
+
+
+def _windows_target(figures: pd.DataFrame, track: str, split: str, state: str) -> Target | None:
+    rows = figures[figures["split"].eq(split) & figures["state"].eq(state)]
+    rows = rows[rows["n_rows"].ge(_ENOUGH_PREDICTIONS) & rows["part"].str.startswith("chance")]
+    shared = rows[rows["statistic"].eq("hit_frequency")].set_index("part")
+    alone = rows[rows["statistic"].eq("perfect model: hit_frequency")].set_index("part")
+    if shared.empty:
+        return None
+    inside = shared["value"].between(shared["low"], shared["high"])
+    strict = shared["value"].between(alone["low"], alone["high"])
+    return Target(
+        f"hit frequencies within a perfect model's 95 % band in every bin of "
+        f"{_ENOUGH_PREDICTIONS} predictions and more, {track}, {split} left out ({state})",
+        bool(inside.all()),
+        f"{inside.sum()} of {len(inside)} bins inside if rows of a group err together, "
+        f"{strict.sum()} if rows err independently",
+    )
+
+
+def _lead_target(figures: pd.DataFrame, split: str) -> Target | None:
+    errors = _compared(figures, "error_eV of", split, "new")
+    if errors.empty:
+        return None
+    name = errors.loc[errors["value"].idxmin(), "statistic"].removeprefix("error_eV of ")
+    lead = _one(figures, f"lead_eV over {name}", split, "new")
+    assert lead is not None
+    return Target(
+        f"the model is better than the best baseline, {split} left out",
+        bool(lead["low"] > 0.0),
+        f"lead over {name.removeprefix(BASELINE)} {lead['value']:.3f} eV "
+        f"({lead['low']:.3f} to {lead['high']:.3f}): {_judged(lead)}",
+    )
