@@ -30,6 +30,7 @@ __all__ = [
 ]
 
 _N_BOOTSTRAP = 2000
+_FEWEST_CLUSTERS = 5
 _BAND = (0.05, 0.95)
 Row = dict[str, object]
 
@@ -59,9 +60,12 @@ def cluster_bootstrap(
     Returns
     -------
     low, high : float
+        Missing with fewer than five clusters, from which no interval can be drawn.
     """
     cluster = frame.drop_duplicates("group").set_index("group")["cluster"].loc[groups.index]
     sums = groups.groupby(cluster.to_numpy()).agg(["sum", "size"]).to_numpy(dtype=float)
+    if len(sums) < _FEWEST_CLUSTERS:
+        return float("nan"), float("nan")
     rng = np.random.default_rng(0)
     drawn = sums[rng.integers(len(sums), size=(_N_BOOTSTRAP, len(sums)))].sum(axis=1)
     low, high = np.quantile(turn(drawn[:, 0] / drawn[:, 1]), _BAND)

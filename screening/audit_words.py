@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 import pandas as pd
 
+from screening.calibration import LEVELS
 from screening.left_out import BASELINE
 
 __all__ = [
@@ -101,8 +102,17 @@ def verdicts(figures: pd.DataFrame) -> list[str]:
                 f"{track}, {split} left out ({state}): error {own['value']:.3f} eV; best baseline "
                 f"is {name} with {best['value']:.3f} eV; lead {lead['value']:.3f} eV "
                 f"({lead['low']:.3f} to {lead['high']:.3f}): {_judged(lead)}."
+                f"{_undecided(_compared(figures, 'lead_eV over', split, state), name)}"
             )
     return sentences
+
+
+def _undecided(leads: pd.DataFrame, best: str) -> str:
+    """Name the other baselines over which the lead is not told apart from zero."""
+    names = leads.loc[~leads["low"].gt(0.0), "statistic"]
+    others = [n.removeprefix(f"lead_eV over {BASELINE}") for n in names]
+    others = [name for name in others if name != best]
+    return f" Nor is it over: {', '.join(others)}." if others else ""
 
 
 def _compared(figures: pd.DataFrame, start: str, split: str, state: str) -> pd.DataFrame:
@@ -112,9 +122,9 @@ def _compared(figures: pd.DataFrame, start: str, split: str, state: str) -> pd.D
 
 def _judged(lead: pd.Series) -> str:
     if lead["low"] > 0.0:
-        return "the model is better than every baseline"
+        return "the model is better"
     if lead["high"] < 0.0:
-        return "the baseline is better than the model"
+        return "the baseline is better"
     return "not told apart from zero"
 
 
@@ -129,25 +139,29 @@ def under_coverage_words(figures: pd.DataFrame) -> list[str]:
     Returns
     -------
     list of str
-        One sentence a part whose exact binomial band lies below 90 %, or which holds less than
-        75 % on too few groups to tell.
+        One sentence a part whose 90 % interval held less than 75 %, or whose exact binomial band
+        lies below 90 %, and one a segment whose band at any level lies below that level.
     """
-    rows = figures[figures["statistic"].eq("coverage_90")]
-    named = rows["part"].str.startswith(("family", "size", "adsorbate"))
-    rows = rows[(named | rows["part"].eq("")) & (rows["value"].lt(0.75) | rows["high"].lt(0.9))]
-    return [_under(row) for _, row in rows.iterrows()]
+    found = []
+    for level in LEVELS:
+        rows = figures[figures["statistic"].eq(f"coverage_{100 * level:.0f}")]
+        named = rows["part"].str.startswith(("family", "size", "adsorbate")) & (level == LEVELS[-1])
+        low = rows["high"].lt(level) | (named & rows["value"].lt(0.75))
+        rows = rows[(named | rows["part"].eq("")) & low]
+        found += [_under(row, level) for _, row in rows.iterrows()]
+    return found
 
 
-def _under(row: pd.Series) -> str:
-    sure = row["high"] < 0.9
-    where = row["part"] or "all rows together"
+def _under(row: pd.Series, level: float) -> str:
+    sure = row["high"] < level
+    where = f"{row['part'] or 'all rows together'}: the {level:.0%} interval"
     tail = (
         "intervals are too narrow there"
         if sure
         else f"{row['n_groups']:.0f} groups cannot tell this from chance"
     )
     return (
-        f"{row['track']}, {row['split']} left out ({row['state']}), {where}: the 90 % interval "
+        f"{row['track']}, {row['split']} left out ({row['state']}), {where} "
         f"held {row['value']:.0%} ({row['low']:.0%} to {row['high']:.0%}); {tail}."
     )
 
