@@ -105,7 +105,7 @@ def evaluate_metals(
     judged = _close_packed(every, every.rows_)
     folds = _folds(judged["metal"], n_splits)
     tasks = [delayed(_single_threaded)(_metal_fold, rows, judged, held) for held in folds]
-    found = pd.concat(Parallel(n_jobs=n_jobs)(tasks)).sort_index()
+    found: pd.DataFrame = pd.concat(Parallel(n_jobs=n_jobs)(tasks)).sort_index()
     found = found.assign(material=found["metal"], group=found["metal"])
     return found[[*_COLUMNS, *METAL_BASELINES, *PLAIN_LEARNERS]].reset_index(drop=True)
 
@@ -192,7 +192,7 @@ def evaluate_compositions(
         for members in FAMILIES.values()
         if (alloys["composition"].isin(held) & alloys["adsorbate"].isin(members)).any()
     ]
-    found = pd.concat(Parallel(n_jobs=n_jobs)(tasks)).sort_index()
+    found: pd.DataFrame = pd.concat(Parallel(n_jobs=n_jobs)(tasks)).sort_index()
     found = found.assign(material=found["composition"], group=found["composition"])
     columns = [*_COLUMNS, "noise_sd_eV", "fold", "gaussian_weight", *ALLOY_BASELINES]
     columns += [MIXING_RULE, *PLAIN_LEARNERS, *ALLOY_LADDER]
@@ -259,7 +259,7 @@ def evaluate_elements(
                 delayed(_single_threaded)(_element_fold, rows, pure, members, held, seed)
                 for held in _folds(elements, n_splits)
             ]
-    found = pd.concat(Parallel(n_jobs=n_jobs)(tasks))
+    found: pd.DataFrame = pd.concat(Parallel(n_jobs=n_jobs)(tasks))
     found = found.sort_values(["group", "adsorbate", "composition"])
     found = found.assign(material=found["composition"])
     columns = [*_COLUMNS, "noise_sd_eV", *ALLOY_BASELINES, MIXING_RULE, *PLAIN_LEARNERS]

@@ -34,6 +34,7 @@ LEFT_OUT = {
 """What each split leaves out, in words."""
 
 _ENOUGH_PREDICTIONS = 20
+_FEWEST_GROUPS = 3
 
 
 @dataclass(frozen=True)
@@ -94,7 +95,7 @@ def verdicts(figures: pd.DataFrame) -> list[str]:
         own = _one(figures, "mean_absolute_error_eV", split, state)
         errors = _compared(figures, "error_eV of", split, state)
         if own is not None and not errors.empty:
-            best = errors.loc[errors["value"].idxmin()]
+            best = errors.sort_values("value", kind="stable").iloc[0]
             name = best["statistic"].removeprefix(f"error_eV of {BASELINE}")
             lead = _one(figures, f"lead_eV over {BASELINE}{name}", split, state)
             assert lead is not None
@@ -112,7 +113,7 @@ def _undecided(leads: pd.DataFrame, best: str) -> str:
     names = leads.loc[~leads["low"].gt(0.0), "statistic"]
     others = [n.removeprefix(f"lead_eV over {BASELINE}") for n in names]
     others = [name for name in others if name != best]
-    return f" Nor is it over: {', '.join(others)}." if others else ""
+    return f" Not told apart from zero, or worse, over: {', '.join(others)}." if others else ""
 
 
 def _compared(figures: pd.DataFrame, start: str, split: str, state: str) -> pd.DataFrame:
@@ -139,14 +140,16 @@ def under_coverage_words(figures: pd.DataFrame) -> list[str]:
     Returns
     -------
     list of str
-        One sentence a part whose 90 % interval held less than 75 %, or whose exact binomial band
+        One sentence a part of three groups and more whose 90 % interval held less than 75 %, or
+        whose exact binomial band
         lies below 90 %, and one a segment whose band at any level lies below that level.
     """
     found = []
     for level in LEVELS:
         rows = figures[figures["statistic"].eq(f"coverage_{100 * level:.0f}")]
         named = rows["part"].str.startswith(("family", "size", "adsorbate")) & (level == LEVELS[-1])
-        low = rows["high"].lt(level) | (named & rows["value"].lt(0.75))
+        few = rows["n_groups"].lt(_FEWEST_GROUPS)
+        low = rows["high"].lt(level) | (named & rows["value"].lt(0.75) & ~few)
         rows = rows[(named | rows["part"].eq("")) & low]
         found += [_under(row, level) for _, row in rows.iterrows()]
     return found
@@ -183,16 +186,22 @@ def distance_words(figures: pd.DataFrame) -> list[str]:
     reach = figures[figures["part"].str.startswith("reach")]
     for track, split, state in _segments(reach):
         rows = reach[reach["split"].eq(split) & reach["state"].eq(state)]
-        errors = rows[rows["statistic"].eq("mean_absolute_error_eV")].set_index("part")
-        held = rows[rows["statistic"].eq("coverage_90")].set_index("part")
+        error = _by_part(rows, "mean_absolute_error_eV")
+        held = _by_part(rows, "coverage_90")
         parts = [
-            f"{name} {errors.loc[f'reach {name}', 'value']:.3f} eV"
-            + (f" (90 % held {held.loc[f'reach {name}', 'value']:.0%})" if len(held) else "")
+            f"{name} {error[f'reach {name}']:.3f} eV"
+            + (f" (90 % held {held[f'reach {name}']:.0%})" if held else "")
             for name in ("near", "edge", "far")
-            if f"reach {name}" in errors.index
+            if f"reach {name}" in error
         ]
         sentences.append(f"{track}, {split} left out ({state}): error {', '.join(parts)}.")
     return sentences
+
+
+def _by_part(rows: pd.DataFrame, statistic: str) -> dict[str, float]:
+    """Return the values of a statistic by the part they were measured on."""
+    chosen = rows[rows["statistic"].eq(statistic)]
+    return dict(zip(chosen["part"], chosen["value"].astype(float), strict=True))
 
 
 def targets(figures: pd.DataFrame) -> list[Target]:
@@ -241,7 +250,7 @@ def _families_target(figures: pd.DataFrame) -> Target | None:
     rows = rows[rows["split"].eq("size ranges") & rows["state"].eq("on record")]
     if rows.empty:
         return None
-    worst = rows.loc[rows["value"].idxmin()]
+    worst = rows.sort_values("value", kind="stable").iloc[0]
     return Target(
         "no family below 75 % coverage at 90 %, size ranges left out (on record)",
         bool(worst["value"] >= 0.75),
@@ -271,7 +280,8 @@ def _lead_target(figures: pd.DataFrame, split: str) -> Target | None:
     errors = _compared(figures, "error_eV of", split, "new")
     if errors.empty:
         return None
-    name = errors.loc[errors["value"].idxmin(), "statistic"].removeprefix("error_eV of ")
+    best = errors.sort_values("value", kind="stable").iloc[0]
+    name = str(best["statistic"]).removeprefix("error_eV of ")
     lead = _one(figures, f"lead_eV over {name}", split, "new")
     assert lead is not None
     return Target(

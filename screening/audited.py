@@ -4,7 +4,8 @@ A figure's name says what was measured, on which track, with what left out, and,
 part, on which part: ``coverage_90, emission, families, family II-VI``.
 """
 
-from collections.abc import Iterator
+from collections.abc import Hashable, Iterator, Mapping
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -143,7 +144,7 @@ def _windows(frame: pd.DataFrame) -> Iterator[Row]:
         yield _banded(f"perfect model: {name}", row["perfect"], row) | counted
 
 
-def _banded(name: str, value: float, row: dict[str, float], kind: str = "independent") -> Row:
+def _banded(name: str, value: float, row: Mapping[Hashable, Any], kind: str = "independent") -> Row:
     return {
         "figure": name,
         "value": value,

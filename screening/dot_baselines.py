@@ -105,7 +105,8 @@ def _nearest_record(train: pd.DataFrame, test: pd.DataFrame) -> FloatArray:
     """Gap of the record nearest in log diameter, bulk gap, log mass and log dielectric constant."""
     known, wanted = _scaled(train), _scaled(test)
     distance = np.linalg.norm(wanted[:, None, :] - known[None, :, :], axis=2)
-    return train["optical_gap_eV"].to_numpy(dtype=float)[distance.argmin(axis=1)]
+    gaps: FloatArray = train["optical_gap_eV"].to_numpy(dtype=np.float64)
+    return gaps[distance.argmin(axis=1)]
 
 
 def _scaled(rows: pd.DataFrame) -> FloatArray:
@@ -139,7 +140,7 @@ def _plain_gaussian(train: pd.DataFrame, test: pd.DataFrame) -> FloatArray:
 def _elemental(rows: pd.DataFrame) -> FloatArray:
     """Return the diameter and the averages of elemental descriptors over the composition."""
     frame = composition_descriptors(rows["material"].tolist())
-    chosen = [c for c in frame if c.startswith("all_mean_")]
+    chosen = [name for name in map(str, frame.columns) if name.startswith("all_mean_")]
     return np.column_stack([rows["diameter_nm"], frame[chosen]]).astype(np.float64)
 
 
@@ -152,7 +153,8 @@ def _elemental_trees(train: pd.DataFrame, test: pd.DataFrame) -> FloatArray:
 
 
 def _physics(rows: pd.DataFrame) -> pd.DataFrame:
-    return ConfinementFeatures().fit_transform(rows[["diameter_nm", *_CONSTANTS]])
+    features: pd.DataFrame = ConfinementFeatures().fit_transform(rows[["diameter_nm", *_CONSTANTS]])
+    return features
 
 
 def _both(rows: pd.DataFrame) -> FloatArray:
@@ -185,7 +187,8 @@ def _with_physics_mean(train: pd.DataFrame, test: pd.DataFrame) -> FloatArray:
 
 
 def _per_size(rows: pd.DataFrame) -> FloatArray:
-    return 1.0 / np.maximum(rows["diameter_nm"].to_numpy(dtype=float), SMALLEST_DIAMETER_nm)
+    diameter = rows["diameter_nm"].to_numpy(dtype=np.float64)
+    return np.asarray(1.0 / np.maximum(diameter, SMALLEST_DIAMETER_nm))
 
 
 BASELINES: dict[str, Baseline] = {

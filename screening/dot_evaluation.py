@@ -127,7 +127,7 @@ def evaluate_splits(
     wanted = pd.Series(data=True, index=rows.index) if judged is None else judged
     tasks = list(_tasks(rows, splits, wanted, seed))
     parts = Parallel(n_jobs=n_jobs)(delayed(_single_threaded)(task, rows) for task in tasks)
-    found = pd.concat([frame for part in parts for frame in part])
+    found: pd.DataFrame = pd.concat([frame for part in parts for frame in part])
     found = found[wanted.loc[found.index].to_numpy()]
     order = found["split"].map(SPLITS.index).argsort(kind="stable")
     return found.iloc[order].reset_index(drop=True)

@@ -132,8 +132,8 @@ def predictive_of(frame: pd.DataFrame) -> tuple[Predictive, pd.Series]:
 
 def baseline_names(frame: pd.DataFrame, start: str = BASELINE) -> list[str]:
     """Return the baselines that all rows of a segment have, without the start of the column."""
-    columns = [c for c in frame if c.startswith(start) and frame[c].notna().all()]
-    return [c.removeprefix(start) for c in columns]
+    columns = [c for c in map(str, frame.columns) if c.startswith(start)]
+    return [c.removeprefix(start) for c in columns if frame[c].notna().all()]
 
 
 def vote_weights(frame: pd.DataFrame) -> FloatArray:

@@ -145,7 +145,7 @@ def _splits(figures: pd.DataFrame) -> Picture | None:
     ax.set_yticks(np.arange(len(own))[::-1], own["segment"])
     ax.set_xlabel("Mean absolute error (eV), 90 % interval")
     ax.legend(fontsize=8)
-    worst = own.loc[own["value"].idxmax()]
+    worst = own.sort_values("value", kind="stable").iloc[-1]
     return _picture(
         "splits",
         "Error by what is left out",
