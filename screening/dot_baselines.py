@@ -105,8 +105,8 @@ def _nearest_record(train: pd.DataFrame, test: pd.DataFrame) -> FloatArray:
     """Gap of the record nearest in log diameter, bulk gap, log mass and log dielectric constant."""
     known, wanted = _scaled(train), _scaled(test)
     distance = np.linalg.norm(wanted[:, None, :] - known[None, :, :], axis=2)
-    gaps: FloatArray = train["optical_gap_eV"].to_numpy(dtype=np.float64)
-    return gaps[distance.argmin(axis=1)]
+    gaps = train["optical_gap_eV"].to_numpy(dtype=np.float64)
+    return np.asarray(gaps[distance.argmin(axis=1)], dtype=np.float64)
 
 
 def _scaled(rows: pd.DataFrame) -> FloatArray:

@@ -94,8 +94,7 @@ def how_sure_markdown() -> str:
         _leads(figures),
         "## Coverage of the 90 % interval by family, size and adsorbate\n",
         _coverage(figures),
-        "Too narrow, or too few groups to tell (of twenty parts of a perfect model, one would be "
-        "named by chance):\n",
+        _NAMED,
         _list(under_coverage_words(figures)),
         "## Far from the data\n",
         _DISTANCE,
@@ -224,6 +223,10 @@ _PERFECT = """Each statistic stands beside what a perfect model would get: truth
 predictions themselves, as many rows as there are, independent of each other. CRPS is the
 continuous ranked probability score, PIT the probability integral transform (its largest distance
 from a uniform distribution), hits are counted in votes over windows with a chance of 0.2 and more.
+"""
+
+_NAMED = """Too narrow, or too few groups to tell; of twenty parts of a perfect model one would be
+named by chance:
 """
 
 _DISTANCE = """Distance is that of the Gaussian process's covariance to the nearest record. *Near*

@@ -20,7 +20,7 @@ from screening.covariance import FloatArray
 __all__ = ["Predictive", "interval_score"]
 
 _SMALLEST_STEP = 1e-9
-_FAR = 40.0
+_FAR = 1e12
 
 
 def _square(n: FloatArray) -> FloatArray:
@@ -99,9 +99,13 @@ class Predictive:
         ndarray of the shape of ``value``
         """
         wanted = np.asarray(value, dtype=np.float64)
-        columns = wanted.reshape(len(self.mean), -1)
-        away = columns - self.mean[:, None]
-        scores = np.empty_like(columns)
+        scores = self._score(wanted.reshape(len(self.mean), -1))
+        return np.asarray(ndtr(scores).reshape(wanted.shape))
+
+    def _score(self, value: FloatArray) -> FloatArray:
+        """Return standard normal scores, exact where chances round to one."""
+        away = value - self.mean[:, None]
+        scores = np.empty_like(value)
         z, normal = self._nodes()
         for i, row in enumerate(away):
             size = np.abs(row)
@@ -109,7 +113,7 @@ class Predictive:
             scores[i] = np.sign(row) * np.where(
                 size > z[i, -1], tail, np.interp(size, z[i], normal)
             )
-        return np.asarray(ndtr(scores).reshape(wanted.shape))
+        return scores
 
     def quantile(self, chance: Any) -> FloatArray:
         """Return the value below which the truth lies with a chance; inverse of `cdf`.
@@ -154,7 +158,7 @@ class Predictive:
         slope = np.hstack([tail, inner[:, ::-1], inner, tail])
         edges = np.concatenate([[-_FAR], -normal[::-1], normal[1:], [_FAR]])
         truth = np.asarray(observed, dtype=np.float64)
-        at = ndtri(self.cdf(truth.reshape(len(self.mean), -1)))
+        at = self._score(truth.reshape(len(self.mean), -1))
         split = np.clip(at[..., None], edges[:-1], edges[1:])
         parts = _square(split) - _square(edges[:-1]) + _square(-split) - _square(-edges[1:])
         return np.asarray(np.einsum("is,iks->ik", slope, parts).reshape(truth.shape))
