@@ -76,9 +76,7 @@ def test_a_perfect_model_scores_as_its_simulation_says():
         0.2 * np.sqrt(2.0 / np.pi), rel=0.02
     )
     # E[CRPS] of a normal is its deviation over sqrt(pi)
-    assert ideal["perfect model: crps_eV"]["value"] == pytest.approx(
-        0.2 / np.sqrt(np.pi), rel=0.02
-    )
+    assert ideal["perfect model: crps_eV"]["value"] == pytest.approx(0.2 / np.sqrt(np.pi), rel=0.02)
     for level in LEVELS:
         share = ideal[f"perfect model: coverage_{100 * level:.0f}"]["value"]
         assert share == pytest.approx(level, abs=0.01)
