@@ -102,7 +102,7 @@ def test_states_of_knowledge_follow_from_what_was_left_out(nested):
 
 
 def test_a_left_out_material_is_farther_from_the_data_than_a_left_out_size(nested):
-    distance = nested.groupby(["material", "split"])["kernel_distance"].mean().unstack()
+    distance = nested.pivot_table(index="material", columns="split", values="kernel_distance")
     assert (distance["materials"] > distance["size ranges"]).all()
 
 

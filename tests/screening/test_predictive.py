@@ -1,3 +1,5 @@
+import itertools
+
 import numpy as np
 import pytest
 from hypothesis import given
@@ -36,7 +38,7 @@ def test_the_ranked_probability_score_equals_its_integral(half, observed):
 
     nodes = sorted({observed, 0.0, *half, *(-width for width in half)})
     edges = [min(nodes) - 12.0 * half[-1], *nodes, max(nodes) + 12.0 * half[-1]]
-    whole = sum(quad(squared, a, b)[0] for a, b in zip(edges, edges[1:], strict=False))
+    whole = sum(quad(squared, a, b)[0] for a, b in itertools.pairwise(edges))
     assert one.crps(np.array([observed]))[0] == pytest.approx(whole, rel=1e-5, abs=1e-7)
 
 

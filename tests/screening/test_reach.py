@@ -67,5 +67,4 @@ def test_prior_correlation_of_a_training_row_with_itself_is_one(model):
     process = model.regressor_.gaussian_
     inside = process.correlation(process.X_[:5])
     assert inside.shape == (5, len(process.X_))
-    # a row without a known source shares all but that with itself
     assert np.diag(inside[:, :5]) == pytest.approx(np.ones(5), abs=1e-9)
