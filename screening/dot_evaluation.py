@@ -2,8 +2,9 @@
 
 For every material the whole procedure (parameters, blend weights, calibration) runs on the other
 materials. The material is then predicted twice: as *new*, and as *on record* with all of its rows
-but one size range, under the weights and calibration that the other materials taught. No figure
-comes from rows that anything learned from.
+but one size range, under the weights and calibration that the other materials taught. Random rows,
+sources and families are left out in the same way, with everything learned from the other rows. No
+figure comes from rows that anything learned from.
 """
 
 from collections.abc import Iterable, Iterator, Sequence
@@ -11,10 +12,10 @@ from collections.abc import Iterable, Iterator, Sequence
 import numpy as np
 import pandas as pd
 from joblib import Parallel, delayed
-from scipy.stats import beta
 from sklearn.model_selection import GroupKFold
 from threadpoolctl import threadpool_limits
 
+from screening.audit_statistics import binomial_band
 from screening.calibration import LEVELS, group_weights
 from screening.covariance import FloatArray
 from screening.dot_baselines import ABLATIONS, BASELINES
@@ -56,8 +57,8 @@ def evaluate_dots(rows: pd.DataFrame, n_jobs: int = 1, seed: int = 0) -> pd.Data
     -------
     pandas.DataFrame
         One row a record and state: record, material, family, diameter_nm, confidence, vote,
-        noise_eV, optical_gap_eV, state, predicted_gap_eV, low_50 ... high_90 and, for *new*, a
-        column for each baseline.
+        noise_eV, optical_gap_eV, state, predicted_gap_eV, low_50 ... high_90, kernel_distance,
+        family_on_record, reach and a column for each baseline.
     """
     found = evaluate_splits(rows, ("size ranges", "materials"), n_jobs=n_jobs, seed=seed)
     return found.drop(columns="split")
@@ -218,14 +219,6 @@ def _bootstrap(values: pd.Series, seed: int = 0) -> tuple[float, float]:
     return float(low), float(high)
 
 
-def _binomial(share: float, n_groups: int) -> tuple[float, float]:
-    """Return the exact 90 % binomial interval of a share, counted in groups."""
-    hits = share * n_groups
-    low = beta.ppf(0.05, hits, n_groups - hits + 1) if hits > 0 else 0.0
-    high = beta.ppf(0.95, hits + 1, n_groups - hits) if hits < n_groups else 1.0
-    return float(low), float(high)
-
-
 def _row(
     figure: str, state: str, groups: pd.Series, ends: tuple[float, float], n_rows: int
 ) -> dict[str, object]:
@@ -275,7 +268,7 @@ def _state_figures(frame: pd.DataFrame, state: str) -> Iterable[dict[str, object
         inside = observed.between(frame[f"low_{name}"], frame[f"high_{name}"]).astype(float)
         groups = _by_group(inside, frame)
         row = _row(
-            f"coverage_{name}", state, groups, _binomial(groups.mean(), len(groups)), len(frame)
+            f"coverage_{name}", state, groups, binomial_band(groups.mean(), len(groups)), len(frame)
         )
         yield row | {"worst": float(groups.min()), "worst_group": str(groups.idxmin())}
         width = _by_group(frame[f"high_{name}"] - frame[f"low_{name}"], frame)
