@@ -30,6 +30,7 @@ __all__ = [
 ]
 
 _N_BOOTSTRAP = 2000
+_N_PERFECT = 200
 _FEWEST_CLUSTERS = 5
 _BAND = (0.05, 0.95)
 Row = dict[str, object]
@@ -210,7 +211,7 @@ def perfect_rows(frame: pd.DataFrame, predictive: Predictive) -> list[Row]:
     list of dict
         Rows named ``perfect model: ...`` after the statistics of `score_rows`.
     """
-    truth = draw_truths(predictive, frame["group"], shared=False)
+    truth = draw_truths(predictive, frame["group"], shared=False, n_draws=_N_PERFECT)
     weights = vote_weights(frame)
     error = np.abs(truth - predictive.mean[:, None])
     found = {

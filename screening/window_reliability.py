@@ -30,7 +30,7 @@ CHANCE_EDGES = (0.01, 0.05, 0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.8, 1.0)
 ACTED_ON = 0.2
 """Predicted chance from which expected and observed hits are compared."""
 
-_N_DRAWS = 200
+_N_DRAWS = 500
 
 
 @dataclass(frozen=True)
@@ -102,7 +102,7 @@ def draw_truths(
         Group of each row.
     shared : bool
         Whether all rows of a group take the same quantile.
-    n_draws : int, default 200
+    n_draws : int, default 500
 
     Returns
     -------
