@@ -35,6 +35,7 @@ LEFT_OUT = {
 
 _ENOUGH_PREDICTIONS = 20
 _FEWEST_GROUPS = 3
+_ENOUGH_GROUPS = 9
 
 
 @dataclass(frozen=True)
@@ -89,6 +90,10 @@ def verdicts(figures: pd.DataFrame) -> list[str]:
     -------
     list of str
         One sentence a track, split and state that holds baselines.
+
+    Notes
+    -----
+    The best baseline is the one with the least error on these rows, which favours it.
     """
     sentences = []
     for track, split, state in _segments(figures):
@@ -102,7 +107,7 @@ def verdicts(figures: pd.DataFrame) -> list[str]:
             sentences.append(
                 f"{track}, {split} left out ({state}): error {own['value']:.3f} eV; best baseline "
                 f"is {name} with {best['value']:.3f} eV; lead {lead['value']:.3f} eV "
-                f"({lead['low']:.3f} to {lead['high']:.3f}): {_judged(lead)}."
+                f"{_judged(lead)}."
                 f"{_undecided(_compared(figures, 'lead_eV over', split, state), name)}"
             )
     return sentences
@@ -122,11 +127,15 @@ def _compared(figures: pd.DataFrame, start: str, split: str, state: str) -> pd.D
 
 
 def _judged(lead: pd.Series) -> str:
+    """Write the interval of a lead and what it says."""
+    if pd.isna(lead["low"]):
+        return f"(too few groups for an interval: {lead['n_groups']:.0f})"
+    ends = f"({lead['low']:.3f} to {lead['high']:.3f})"
     if lead["low"] > 0.0:
-        return "the model is better"
+        return f"{ends}: the model is better"
     if lead["high"] < 0.0:
-        return "the baseline is better"
-    return "not told apart from zero"
+        return f"{ends}: the baseline is better"
+    return f"{ends}: not told apart from zero"
 
 
 def under_coverage_words(figures: pd.DataFrame) -> list[str]:
@@ -215,7 +224,7 @@ def targets(figures: pd.DataFrame) -> list[Target]:
     Returns
     -------
     list of Target
-        Promises that these figures can decide.
+        Promises that these figures can decide: with fewer than nine groups none is.
     """
     found = [
         _coverage_target(figures, "size ranges", "on record", 0.87, 0.93),
@@ -234,7 +243,7 @@ def _coverage_target(
     figures: pd.DataFrame, split: str, state: str, low: float, high: float
 ) -> Target | None:
     row = _one(figures, "coverage_90", split, state)
-    if row is None:
+    if row is None or row["n_groups"] < _ENOUGH_GROUPS:
         return None
     return Target(
         f"90 % intervals hold {low:.0%} to {high:.0%}, {split} left out ({state})",
@@ -248,7 +257,7 @@ def _families_target(figures: pd.DataFrame) -> Target | None:
         figures["statistic"].eq("coverage_90") & figures["part"].str.startswith("family")
     ]
     rows = rows[rows["split"].eq("size ranges") & rows["state"].eq("on record")]
-    if rows.empty:
+    if rows["n_groups"].sum() < _ENOUGH_GROUPS:
         return None
     worst = rows.sort_values("value", kind="stable").iloc[0]
     return Target(
@@ -263,7 +272,7 @@ def _windows_target(figures: pd.DataFrame, track: str, split: str, state: str) -
     rows = rows[rows["n_rows"].ge(_ENOUGH_PREDICTIONS) & rows["part"].str.startswith("chance")]
     shared = rows[rows["statistic"].eq("hit_frequency")].set_index("part")
     alone = rows[rows["statistic"].eq("perfect model: hit_frequency")].set_index("part")
-    if shared.empty:
+    if shared.empty or shared["n_groups"].max() < _ENOUGH_GROUPS:
         return None
     inside = shared["value"].between(shared["low"], shared["high"])
     strict = shared["value"].between(alone["low"], alone["high"])
@@ -278,7 +287,7 @@ def _windows_target(figures: pd.DataFrame, track: str, split: str, state: str) -
 
 def _lead_target(figures: pd.DataFrame, split: str) -> Target | None:
     errors = _compared(figures, "error_eV of", split, "new")
-    if errors.empty:
+    if errors.empty or errors["n_groups"].iloc[0] < _ENOUGH_GROUPS:
         return None
     best = errors.sort_values("value", kind="stable").iloc[0]
     name = str(best["statistic"]).removeprefix("error_eV of ")
@@ -287,6 +296,5 @@ def _lead_target(figures: pd.DataFrame, split: str) -> Target | None:
     return Target(
         f"the model is better than the best baseline, {split} left out",
         bool(lead["low"] > 0.0),
-        f"lead over {name.removeprefix(BASELINE)} {lead['value']:.3f} eV "
-        f"({lead['low']:.3f} to {lead['high']:.3f}): {_judged(lead)}",
+        f"lead over {name.removeprefix(BASELINE)} {lead['value']:.3f} eV {_judged(lead)}",
     )

@@ -187,8 +187,8 @@ def interval_score(observed: Any, low: Any, high: Any, level: float) -> FloatArr
 
     Examples
     --------
-    >>> interval_score([0.5, 2.0], [0.0, 0.0], [1.0, 1.0], 0.9).tolist()
-    [1.0, 21.0]
+    >>> interval_score([0.5, 2.0], [0.0, 0.0], [1.0, 1.0], 0.5).tolist()
+    [1.0, 5.0]
     """
     truth, bottom, top = (np.asarray(v, dtype=float) for v in (observed, low, high))
     outside = np.maximum(bottom - truth, 0.0) + np.maximum(truth - top, 0.0)

@@ -190,3 +190,12 @@ def test_a_faulty_table_of_the_users_ends_with_code_three_and_writes_nothing(tmp
     assert "row 2: diameter_nm" in done.stderr
     assert "row 3: material" in done.stderr
     assert not (tmp_path / "out").exists()
+
+
+def test_too_few_groups_decide_no_promise_and_no_lead():
+    few = predictions("materials", "new", 0.3, n=90).query("material in ['m0', 'm1', 'm2']")
+    figures = parsed(audited_figures(emission_table(few), fewest_groups=1))
+    assert targets(figures) == []
+    (said,) = verdicts(figures)
+    assert "too few groups for an interval: 3" in said
+    assert "nan" not in said
