@@ -4,7 +4,7 @@ VENV := .venv
 BIN := $(VENV)/bin
 OUT ?= demo-run
 
-.PHONY: demo test clean evidence
+.PHONY: demo test clean evidence tables
 
 $(BIN)/fewnm: pyproject.toml requirements.lock
 	$(PYTHON) -c "import sys; sys.exit('fewnm needs Python 3.11 or newer') if sys.version_info < (3, 11) else None"
@@ -28,6 +28,10 @@ evidence: $(BIN)/fewnm
 	$(BIN)/fewnm audit --out build/audit --overwrite
 	cp build/audit/held_out_figures.csv datasets/held_out_figures.csv
 	$(BIN)/python -m screening.how_sure
+
+# Crystallites by tight binding; rows on record are kept, a run that was stopped goes on.
+tables: $(BIN)/fewnm
+	$(BIN)/python -m features.computed_dots
 
 clean:
 	rm -rf $(VENV) build dist $(OUT)

@@ -22,6 +22,7 @@ __all__ = [
     "Reaction",
     "common_references",
     "coordination_slope",
+    "free_energy_correction",
     "free_energy_eV",
     "reaction",
     "reaction_names",
@@ -120,6 +121,24 @@ class Reaction:
             total = total + factor * value
         return total
 
+    def window_eV(self, decades: float = 1.0) -> tuple[float, float]:
+        """Return where the relative volcano activity is within some decades of the top.
+
+        Parameters
+        ----------
+        decades : float, default 1.0
+
+        Returns
+        -------
+        (low, high) : tuple of float
+            Of the descriptor.
+        """
+        loss = decades * _BOLTZMANN_EV * self.temperature_K * np.log(10.0)
+        return (
+            float(self.optimum_eV - loss / self.strong_slope),
+            float(self.optimum_eV + loss / self.weak_slope),
+        )
+
 
 @cache
 def _corrections() -> pd.DataFrame:
@@ -135,6 +154,42 @@ def common_references() -> dict[str, str]:
     'H2O-0.5H2'
     """
     return {str(a): str(r) for a, r in _corrections()["reference_state"].items()}
+
+
+def free_energy_correction(adsorbate: str) -> tuple[float, float]:
+    """Return what turns an adsorption energy into a free energy at 298 K and 1 bar.
+
+    Parameters
+    ----------
+    adsorbate : str
+
+    Returns
+    -------
+    (correction_eV, correction_sd_eV) : tuple of float
+
+    Raises
+    ------
+    UnknownMaterialError
+        If no correction is tabulated for the adsorbate.
+
+    Examples
+    --------
+    >>> free_energy_correction("H")
+    (0.24, 0.05)
+    """
+    table = _corrections()
+    if adsorbate not in table.index:
+        raise UnknownMaterialError(
+            explain(
+                "no free-energy correction",
+                where=f"adsorbate {adsorbate!r}",
+                expected=f"one of {', '.join(table.index)}",
+            )
+        )
+    return (
+        float(table["correction_eV"].loc[adsorbate]),
+        float(table["correction_sd_eV"].loc[adsorbate]),
+    )
 
 
 def free_energy_eV(energy_eV: Any, adsorbate: str) -> FloatArray:
@@ -160,17 +215,7 @@ def free_energy_eV(energy_eV: Any, adsorbate: str) -> FloatArray:
     >>> round(float(free_energy_eV(-0.33, "H")), 2)
     -0.09
     """
-    table = _corrections()
-    if adsorbate not in table.index:
-        raise UnknownMaterialError(
-            explain(
-                "no free-energy correction",
-                where=f"adsorbate {adsorbate!r}",
-                expected=f"one of {', '.join(table.index)}",
-            )
-        )
-    correction = float(table["correction_eV"].loc[adsorbate])
-    return np.asarray(energy_eV, dtype=np.float64) + correction
+    return np.asarray(energy_eV, dtype=np.float64) + free_energy_correction(adsorbate)[0]
 
 
 @cache

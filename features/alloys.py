@@ -24,7 +24,14 @@ from features.solid_solutions import SolidSolution, solid_solution
 from features.tables import read_table
 from features.trends import kane_electron_mass
 
-__all__ = ["Alloy", "Interpolated", "alloy_constants", "alloy_gap", "interpolate_alloy"]
+__all__ = [
+    "Alloy",
+    "Interpolated",
+    "alloy_constants",
+    "alloy_gap",
+    "alloy_row",
+    "interpolate_alloy",
+]
 
 _VALLEYS = ("Gamma", "L", "X")
 # Share of a constant by which published alloys scatter about the rule at equal mixing of two.
@@ -309,21 +316,42 @@ def alloy_constants(materials: Sequence[str]) -> pd.DataFrame:
     >>> alloy_constants(["CdSe0.5S0.5"])["structure"].tolist()
     ['wurtzite']
     """
-    rows = []
-    for material in materials:
-        alloy = interpolate_alloy(material)
-        main = max(sorted(alloy.members), key=alloy.members.__getitem__)
-        row: dict[str, object] = {
-            "material": material,
-            "structure": alloy.structure,
-            "family": _constants()[main]["family"],
-            "gap_eV": alloy.gap_eV.value,
-            "gap_sd_eV": alloy.gap_sd_eV,
-            "gap_rule": alloy.gap_eV.rule,
-            "valley": alloy.valley,
-        }
-        for name in _QUANTITIES:
-            part: Interpolated = getattr(alloy, name)
-            row |= {name: part.value, f"{name}_sd": part.sd, f"{name}_rule": part.rule}
-        rows.append(row | {"note": alloy.note})
-    return pd.DataFrame(rows)
+    return pd.DataFrame([alloy_row(material) for material in materials])
+
+
+def alloy_row(material: str) -> dict[str, Any]:
+    """Return one row of `alloy_constants` as a dictionary.
+
+    Parameters
+    ----------
+    material : str
+
+    Returns
+    -------
+    dict
+
+    Raises
+    ------
+    FormulaError, UnknownMaterialError
+        As for `alloy_constants`.
+
+    Examples
+    --------
+    >>> alloy_row("CdSe0.5S0.5")["structure"]
+    'wurtzite'
+    """
+    alloy = interpolate_alloy(material)
+    main = max(sorted(alloy.members), key=alloy.members.__getitem__)
+    row: dict[str, Any] = {
+        "material": material,
+        "structure": alloy.structure,
+        "family": _constants()[main]["family"],
+        "gap_eV": alloy.gap_eV.value,
+        "gap_sd_eV": alloy.gap_sd_eV,
+        "gap_rule": alloy.gap_eV.rule,
+        "valley": alloy.valley,
+    }
+    for name in _QUANTITIES:
+        part: Interpolated = getattr(alloy, name)
+        row |= {name: part.value, f"{name}_sd": part.sd, f"{name}_rule": part.rule}
+    return row | {"note": alloy.note}

@@ -13,7 +13,7 @@ from features.elements import element_table, oxidation_states
 from features.errors import FormulaError, explain
 from features.formula import ORGANIC_SYMBOLS, Compound
 
-__all__ = ["ChargeBalance", "charge_balance", "require_semiconductor"]
+__all__ = ["ChargeBalance", "charge_balance", "require_semiconductor", "usual_state"]
 
 _TOLERANCE = 0.02
 _MAX_INVERSION = 0.35
@@ -66,7 +66,28 @@ def _strain(states: tuple[int, ...], symbols: tuple[str, ...], usual: dict[str, 
     return rare + 5.0 * _inversion(states, symbols)
 
 
-def _usual_state(symbol: str, *, anion: bool) -> int:
+@cache
+def usual_state(symbol: str, *, anion: bool) -> int:
+    """Return the oxidation state that an element takes most often in semiconductors.
+
+    Parameters
+    ----------
+    symbol : str
+        Element, or the organic cations FA and MA.
+    anion : bool
+        Whether it stands on the sublattice of the anions.
+
+    Returns
+    -------
+    int
+        Copper, silver, gold and thallium 1, lead and mercury 2, otherwise the highest
+        (anions: lowest) state on record.
+
+    Examples
+    --------
+    >>> usual_state("In", anion=False), usual_state("Se", anion=True)
+    (3, -2)
+    """
     states = oxidation_states(symbol)
     if anion and states[0] < 0:
         return states[0]
@@ -135,7 +156,7 @@ def charge_balance(compound: Compound) -> ChargeBalance:
         return ChargeBalance(dict.fromkeys(symbols, 0.0), 0.0)
     chi = _electronegativities()
     most = max(chi[s] for s in symbols)
-    usual = {s: _usual_state(s, anion=chi[s] > most - 0.5) for s in symbols}
+    usual = {s: usual_state(s, anion=chi[s] > most - 0.5) for s in symbols}
     return _best_assignment(symbols, shares, usual)
 
 

@@ -9,8 +9,11 @@ codes follow the Globally Harmonised System; the tables say which were recalled.
 import re
 from collections.abc import Hashable, Iterable, Mapping
 from dataclasses import dataclass
+from datetime import date
 from functools import cache
 from typing import Any
+
+import pandas as pd
 
 from features.mass_shares import ORGANIC_CATIONS, checked_composition, mass_percent
 from features.tables import read_table
@@ -21,6 +24,7 @@ __all__ = [
     "RohsShare",
     "caution_text",
     "cautions_for",
+    "exemptions_running",
     "hazard_class",
     "rohs_exemptions",
     "rohs_mass_fractions",
@@ -348,4 +352,32 @@ def rohs_exemptions(element: str) -> tuple[str, ...]:
     return tuple(
         f"{row['applies_to']}: {row['text']} (last day: {row['valid_until']})"
         for row in chosen.to_dict("records")
+    )
+
+
+def exemptions_running(element: str, day: date) -> tuple[str, ...]:
+    """Return exemptions on record for an element that have not ended by a day.
+
+    Parameters
+    ----------
+    element : str
+        Symbol.
+    day : datetime.date
+
+    Returns
+    -------
+    tuple of str
+        Use and last day of each; an exemption without a last day on record is left out.
+
+    Examples
+    --------
+    >>> len(exemptions_running("Cd", date(2026, 1, 1)))
+    1
+    """
+    rules = read_table("hazard_rules")
+    chosen = rules[rules["kind"].eq("exemption") & rules["element"].eq(element)]
+    last = pd.to_datetime(chosen["valid_until"])
+    running = chosen[last >= pd.Timestamp(day)]
+    return tuple(
+        f"{row['applies_to']} (last day {row['valid_until']})" for row in running.to_dict("records")
     )

@@ -12,7 +12,13 @@ from functools import cache
 
 from features.errors import FormulaError, PhysicsRangeError, explain
 
-__all__ = ["ORGANIC_CATIONS", "checked_composition", "core_shell_composition", "mass_percent"]
+__all__ = [
+    "ORGANIC_CATIONS",
+    "checked_composition",
+    "core_shell_composition",
+    "mass_percent",
+    "molar_mass_g",
+]
 
 ORGANIC_CATIONS = {"FA": {"C": 1, "H": 5, "N": 2}, "MA": {"C": 1, "H": 6, "N": 1}}
 """Atoms of the organic cations that may stand in a composition."""
@@ -98,6 +104,32 @@ def mass_percent(composition: Mapping[str, float]) -> dict[str, float]:
     }
     total = sum(masses.values())
     return {symbol: 100.0 * mass / total for symbol, mass in masses.items()}
+
+
+def molar_mass_g(composition: Mapping[str, float]) -> float:
+    """Return the mass of one mole of a composition.
+
+    Parameters
+    ----------
+    composition : mapping of str to float
+        As for `checked_composition`.
+
+    Returns
+    -------
+    float
+        Mass, g/mol.
+
+    Raises
+    ------
+    FormulaError
+        As for `mass_percent`.
+
+    Examples
+    --------
+    >>> round(molar_mass_g({"Cd": 1, "Se": 1}), 1)
+    191.4
+    """
+    return sum(n * _atomic_mass(symbol) for symbol, n in checked_composition(composition).items())
 
 
 def core_shell_composition(

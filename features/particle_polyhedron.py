@@ -15,7 +15,14 @@ from numpy.typing import NDArray
 
 from features.particle_lattice import CrystalLattice, IntArray
 
-__all__ = ["ExplicitParticle", "SiteClass", "cut_particle", "surroundings"]
+__all__ = [
+    "ExplicitParticle",
+    "ResolvedClass",
+    "SiteClass",
+    "cut_particle",
+    "resolved",
+    "surroundings",
+]
 
 FloatArray = NDArray[np.float64]
 
@@ -36,6 +43,23 @@ class SiteClass:
     site: str
     facet: str
     coordination: int
+
+
+@dataclass(frozen=True, order=True)
+class ResolvedClass(SiteClass):
+    """A class of atoms that share their generalised coordination as well.
+
+    Attributes
+    ----------
+    generalised_coordination : float
+    """
+
+    generalised_coordination: float
+
+    @property
+    def whole(self) -> SiteClass:
+        """The class without the distinction."""
+        return SiteClass(self.site, self.facet, self.coordination)
 
 
 @dataclass(frozen=True)
@@ -81,6 +105,38 @@ class ExplicitParticle:
             self.class_index + 1, self.generalised_coordination, minlength=len(self.classes) + 1
         )[1:]
         return dict(zip(self.classes, sums.tolist(), strict=True))
+
+
+def resolved(particle: ExplicitParticle) -> ExplicitParticle:
+    """Return the particle with its surface atoms classed by generalised coordination as well.
+
+    Parameters
+    ----------
+    particle : ExplicitParticle
+
+    Returns
+    -------
+    ExplicitParticle
+        Classes are `ResolvedClass`.
+    """
+    surface = particle.class_index >= 0
+    values = particle.generalised_coordination.round(6)
+    key = np.column_stack([particle.class_index[surface], values[surface]])
+    rows, index = np.unique(key, axis=0, return_inverse=True)
+    old = [particle.classes[int(i)] for i in rows[:, 0]]
+    classes = tuple(
+        ResolvedClass(c.site, c.facet, c.coordination, float(value))
+        for c, value in zip(old, rows[:, 1], strict=True)
+    )
+    class_index = np.full(particle.n_atoms, -1, dtype=np.int64)
+    class_index[surface] = index.reshape(-1)
+    return ExplicitParticle(
+        particle.positions,
+        particle.coordination,
+        particle.generalised_coordination,
+        classes,
+        class_index,
+    )
 
 
 def _candidates(

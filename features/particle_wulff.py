@@ -24,7 +24,7 @@ from features.particle_lattice import (
     IntArray,
     crystal_lattice,
 )
-from features.particle_polyhedron import ExplicitParticle, SiteClass, cut_particle
+from features.particle_polyhedron import ExplicitParticle, SiteClass, cut_particle, resolved
 
 __all__ = ["broken_bond_energies", "wulff_areas", "wulff_ladder", "wulff_particle"]
 
@@ -43,6 +43,7 @@ _ROOMY = {
 }
 # a closed form extrapolated below so few sites says little of their coordination
 _FEWEST_SITES = 6.0
+_ROOMIER = 1.25
 _BLEND_ATOMS = (500.0, 4000.0)
 _N_RUNGS = 300
 
@@ -194,12 +195,16 @@ def _volume_per_site(lattice: CrystalLattice) -> float:
 
 
 @cache
-def _forms_about(structure: str, names: tuple[str, ...], middle: tuple[int, ...]) -> ClosedForms:
+def _forms_about(
+    structure: str, names: tuple[str, ...], middle: tuple[int, ...], *, is_resolved: bool = False
+) -> ClosedForms:
     lattice = crystal_lattice(structure)
-    return closed_forms(
-        lambda layers: cut_particle(lattice, dict(zip(names, layers.tolist(), strict=True))),
-        np.array(middle, dtype=np.int64),
-    )
+
+    def build(layers: IntArray) -> ExplicitParticle:
+        particle = cut_particle(lattice, dict(zip(names, layers.tolist(), strict=True)))
+        return resolved(particle) if is_resolved else particle
+
+    return closed_forms(build, np.array(middle, dtype=np.int64))
 
 
 def _forms(lattice: CrystalLattice, energies: Energies) -> ClosedForms | None:
@@ -278,6 +283,8 @@ def wulff_ladder(
     energies_J_m2: Energies,
     largest_n_atoms: float,
     c_over_a: float = IDEAL_C_OVER_A,
+    *,
+    is_resolved: bool = False,
 ) -> Ladder:
     """Return site counts of the Wulff shape against size.
 
@@ -288,6 +295,8 @@ def wulff_ladder(
         Surface energy of every facet considered.
     largest_n_atoms : float
     c_over_a : float
+    is_resolved : bool, default False
+        Class sites by generalised coordination as well.
 
     Returns
     -------
@@ -300,12 +309,21 @@ def wulff_ladder(
     True
     """
     lattice = crystal_lattice(structure, c_over_a)
-    kept, forms = _wulff(structure, c_over_a, energies_J_m2)
-    ladder = _plain_ladder(lattice, kept, forms, largest_n_atoms)
-    if structure != "fcc" or len(kept) < 3:
-        return ladder
-    small = _plain_ladder(lattice, *_wulff(structure, c_over_a, kept[:-1]), largest_n_atoms)
-    return _blend(small, ladder)
+    shapes = [_wulff(structure, c_over_a, energies_J_m2)]
+    if structure == "fcc" and len(shapes[0][0]) >= 3:
+        shapes.insert(0, _wulff(structure, c_over_a, shapes[0][0][:-1]))
+    ladders = []
+    for kept, forms in shapes:
+        used = _finer(lattice, kept, forms) if is_resolved else forms
+        ladders.append(_plain_ladder(lattice, kept, used, largest_n_atoms))
+    return ladders[0] if len(ladders) == 1 else _blend(*ladders)
+
+
+def _finer(lattice: CrystalLattice, kept: Energies, forms: ClosedForms) -> ClosedForms:
+    """Return closed forms by generalised coordination, about a particle whose facets hold all."""
+    middle = np.round(_ROOMIER * forms.middle).astype(np.int64)
+    names = tuple(name for name, _ in kept)
+    return _forms_about(lattice.structure, names, tuple(middle.tolist()), is_resolved=True)
 
 
 def wulff_particle(

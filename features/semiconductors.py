@@ -15,7 +15,14 @@ from features.errors import UnknownMaterialError, explain
 from features.formula import parse_formula
 from features.tables import read_table
 
-__all__ = ["CONSTANTS", "bulk_constants", "has_indirect_gap", "known_materials", "match_material"]
+__all__ = [
+    "CONSTANTS",
+    "bulk_constants",
+    "find_material",
+    "has_indirect_gap",
+    "known_materials",
+    "match_material",
+]
 
 CONSTANTS = ("gap_eV", "electron_mass_m0", "hole_mass_m0", "dielectric")
 """Columns that the confinement models read."""
@@ -44,6 +51,22 @@ def known_materials() -> list[str]:
     return sorted(_filled_table().index)
 
 
+def find_material(text: str) -> str | None:
+    """Return the table's name of a material, or None where no bulk constants are on record.
+
+    Raises
+    ------
+    FormulaError
+        If the text is not a formula.
+
+    Examples
+    --------
+    >>> find_material("SeCd"), find_material("NaCl")
+    ('CdSe', None)
+    """
+    return _by_canonical().get(parse_formula(text).formula)
+
+
 @cache
 def match_material(text: str) -> str:
     """Return the table's name of a material, whatever order its formula is written in.
@@ -69,10 +92,9 @@ def match_material(text: str) -> str:
     >>> match_material("SeCd")
     'CdSe'
     """
-    names = _by_canonical()
-    canonical = parse_formula(text).formula
-    if canonical in names:
-        return names[canonical]
+    name = find_material(text)
+    if name is not None:
+        return name
     near = get_close_matches(text, known_materials(), n=3, cutoff=0.5)
     raise UnknownMaterialError(
         explain(

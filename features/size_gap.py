@@ -50,13 +50,15 @@ def size_band(diameter_nm: object) -> np.ndarray:
     return np.asarray(np.digitize(np.asarray(diameter_nm, dtype=float), SIZE_BANDS_nm))
 
 
-def size_gap_rows(records: pd.DataFrame) -> pd.DataFrame:
+def size_gap_rows(records: pd.DataFrame, bulk: pd.DataFrame | None = None) -> pd.DataFrame:
     """Join records with bulk constants and turn them into optical gaps with noise and votes.
 
     Parameters
     ----------
     records : pandas.DataFrame
         Columns of the table ``size_gap_records``.
+    bulk : pandas.DataFrame or None, default None
+        Bulk constants of each record, with its index; None for those on record.
 
     Returns
     -------
@@ -65,7 +67,8 @@ def size_gap_rows(records: pd.DataFrame) -> pd.DataFrame:
         and size uncertainty in quadrature) and ``vote`` (1 for a point, 1/n for each of the n
         samples of a curve), with the caller's index.
     """
-    bulk = bulk_constants(records["material"].tolist()).set_index(records.index)
+    if bulk is None:
+        bulk = bulk_constants(records["material"].tolist()).set_index(records.index)
     rows = records.join(bulk.drop(columns=["material", "structure", "source"]))
     stokes = stokes_shifts(rows["material"].tolist(), rows["family"].tolist())
     stokes = stokes.set_index(rows.index)

@@ -4,6 +4,7 @@ Nothing in `features.stability` was fitted to these points, so every point is an
 """
 
 from collections.abc import Mapping
+from functools import cache
 from typing import Any
 
 import numpy as np
@@ -12,7 +13,7 @@ import pandas as pd
 from features.stability import melting_estimate, thermo_constants
 from features.tables import read_table
 
-__all__ = ["melting_residuals", "melting_scorecard"]
+__all__ = ["melting_discrepancy", "melting_residuals", "melting_scorecard"]
 
 
 def _residuals(point: Mapping[Any, Any]) -> dict[str, Any]:
@@ -90,3 +91,25 @@ def melting_scorecard(*, outside_checks_only: bool = True) -> pd.DataFrame:
             "rms_error_over_bulk": np.sqrt((share**2).mean()),
         }
     return pd.DataFrame(card).T.rename_axis("model")
+
+
+@cache
+def melting_discrepancy() -> tuple[float, float]:
+    """Return by how much the recommended melting temperature was off at published points.
+
+    Returns
+    -------
+    share : float
+        Root-mean-square error over the bulk melting temperature.
+    diameter_nm : float
+        Median diameter of the points; a limit on temperature takes the error to fall as one over
+        the diameter beyond it, as the size effect itself does.
+
+    Examples
+    --------
+    >>> share, diameter_nm = melting_discrepancy()
+    >>> 0.0 < share < 0.3, 1.0 < diameter_nm < 20.0
+    (True, True)
+    """
+    share = melting_scorecard()["rms_error_over_bulk"].to_dict()["recommended"]
+    return float(share), float(melting_residuals()["diameter_nm"].median())

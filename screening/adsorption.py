@@ -6,8 +6,7 @@ groups of the state that `record_state` names: they come from residuals of metal
 compositions that were left out, never from rows that the model saw.
 """
 
-from collections.abc import Collection
-from functools import lru_cache
+from collections.abc import Collection, Mapping
 from typing import Any, Self
 
 import numpy as np
@@ -86,10 +85,8 @@ class AdsorptionModel:
         self
         """
         self.pure_ = PureSurfaceModel().fit(pure_rows() if pure is None else pure)
-        self.alloys_ = _shifted(alloy_rows() if alloys is None else alloys, self.pure_)
         self._calibrate_pure()
-        self.sites_ = SiteShifts().fit(self.pure_.rows_)
-        self.rule_ = HollowRule().fit(self.alloys_, self.pure_)
+        self._prepare_alloys(alloy_rows() if alloys is None else alloys)
         members = sorted(set(self.alloys_["first"]) | set(self.alloys_["second"]))
         without = pure_models_without(self.pure_, members)
         self.families_ = {
@@ -99,6 +96,44 @@ class AdsorptionModel:
             for name, adsorbates in FAMILIES.items()
         }
         return self
+
+    def _prepare_alloys(self, alloys: pd.DataFrame) -> None:
+        self.alloys_ = _shifted(alloys, self.pure_)
+        self.sites_ = SiteShifts().fit(self.pure_.rows_)
+        self.rule_ = HollowRule().fit(self.alloys_, self.pure_)
+
+    def learned(self) -> dict[str, Any]:
+        """Return what the fit learned, as plain numbers for `restored`."""
+        return {
+            "pure": self.pure_.gaussian_.theta_.tolist(),
+            "calibrations": {s: c.learned() for s, c in self.calibrations_.items()},
+            "families": {name: model.learned() for name, model in self.families_.items()},
+        }
+
+    @classmethod
+    def restored(cls, kept: Mapping[str, Any]) -> Self:
+        """Rebuild the model of the packaged tables from what `learned` returned.
+
+        Raises
+        ------
+        KeyError, TypeError, ValueError
+            If the numbers are not those of such a model.
+        """
+        model = cls()
+        theta = np.array(kept["pure"], dtype=np.float64)
+        model.pure_ = PureSurfaceModel().fit(pure_rows(), theta, max_iter=0)
+        model.calibrations_ = {
+            str(state): GroupCalibration.restored(part, str(state))
+            for state, part in kept["calibrations"].items()
+        }
+        model._prepare_alloys(alloy_rows())
+        model.families_ = {
+            name: AlloySurfaceModel(adsorbates).restore(
+                model.alloys_, model.pure_, kept["families"][name]
+            )
+            for name, adsorbates in FAMILIES.items()
+        }
+        return model
 
     @property
     def adsorbates(self) -> list[str]:
@@ -172,6 +207,16 @@ class AdsorptionModel:
         parts = {first: 1.0} if first == second else {first: share, second: 1.0 - share}
         shift, sd = self.sites_.shift(parts, adsorbate, coordination, close_packed_structure(first))
         return _site_frame(terrace, shift, sd, sites.index)
+
+    def calibration(self, state: str, adsorbate: str) -> GroupCalibration:
+        """Return the calibration behind a record state of `predict_surfaces`."""
+        if state in self.calibrations_:
+            return self.calibrations_[state]
+        name = family_of(adsorbate)
+        if name is None or state == "mixing rule":
+            return self.rule_.calibration_
+        family = self.families_[name]
+        return family.element_calibration_ if state == "new element" else family.calibration_
 
     def source_offsets(self) -> pd.DataFrame:
         """Return the fitted offset of every source and adsorbate: see `PureSurfaceModel`."""
@@ -354,7 +399,8 @@ def _site_frame(
     return frame.assign(terrace_sd_eV=common, site_sd_eV=sd)
 
 
-@lru_cache(maxsize=1)
 def adsorption_model() -> AdsorptionModel:
-    """Return the model fitted on the packaged tables, fitted once a process."""
-    return AdsorptionModel().fit()
+    """Return the model of the packaged tables: see `screening.trained_surfaces`."""
+    from screening.trained_surfaces import trained_surfaces  # noqa: PLC0415 - it imports this one
+
+    return trained_surfaces()

@@ -32,6 +32,8 @@ _OUTLIER = 2.0
 _TREE_OPTIONS = {"max_iter": 120}
 _FOLDS = 5
 _REFINEMENT = 12
+_NOISE = 0.15
+_COMPOSITIONS, _ELEMENTS = "compositions left out", "elements left out"
 
 
 def robust_gaussian(
@@ -61,14 +63,17 @@ def robust_gaussian(
         The enlarged noise of the rows.
     """
     first = GroupedGaussianProcess(
-        terms=terms, noise=0.15, start=None if start is None else start.tolist(), max_iter=max_iter
+        terms=terms,
+        noise=_NOISE,
+        start=None if start is None else start.tolist(),
+        max_iter=max_iter,
     )
     first.fit(X, z, noise_sd=noise)
     mean, sd = first.leave_group_out(np.arange(len(z)))
     expected = np.sqrt(sd**2 + first.noise_**2 + noise**2)
     excess = np.maximum((z - mean) ** 2 - (_OUTLIER * expected) ** 2, 0.0)
     again = GroupedGaussianProcess(
-        terms=terms, noise=0.15, start=first.theta_.tolist(), max_iter=max_iter // 3
+        terms=terms, noise=_NOISE, start=first.theta_.tolist(), max_iter=max_iter // 3
     )
     enlarged = np.sqrt(noise**2 + excess)
     return again.fit(X, z, noise_sd=enlarged), enlarged
@@ -100,6 +105,15 @@ class AlloySurfaceModel:
         -------
         self
         """
+        self._prepare(rows, pure)
+        self._fit_gaussians()
+        if compositions:
+            self.trees_ = self._fit_trees(np.arange(len(self._z)))
+            self._calibrate_compositions()
+        return self
+
+    def _prepare(self, rows: pd.DataFrame, pure: PureSurfaceModel) -> None:
+        """Lay out rows, design and scaled energies."""
         self.rows_ = rows[rows["adsorbate"].isin(self.adsorbates)].reset_index(drop=True)
         self.pure_ = pure
         grouped = self.rows_.groupby("adsorbate")["energy_eV"]
@@ -109,10 +123,43 @@ class AlloySurfaceModel:
         self._unit = self._deviation(self.rows_)
         self._z = (self.rows_["energy_eV"].to_numpy() - self._centre(self.rows_)) / self._unit
         self._noise = self.rows_["noise_sd_eV"].to_numpy() / self._unit
-        self._fit_gaussians()
-        if compositions:
-            self.trees_ = self._fit_trees(np.arange(len(self._z)))
-            self._calibrate_compositions()
+        self._half = np.array([zlib.crc32(c.encode()) % 2 for c in self.rows_["composition"]])
+
+    def learned(self) -> dict[str, Any]:
+        """Return what the fit and the calibrations learned, as plain numbers."""
+        return {
+            "theta": self.gaussian_.theta_.tolist(),
+            "enlarged": self._enlarged.tolist(),
+            "halves": [theta.tolist() for theta in self._half_thetas],
+            "weight": self.weight_,
+            "calibration": self.calibration_.learned(),
+            "element_sd": self.element_sd_,
+            "element_calibration": self.element_calibration_.learned(),
+        }
+
+    def restore(self, rows: pd.DataFrame, pure: PureSurfaceModel, kept: Mapping[str, Any]) -> Self:
+        """Rebuild a fitted model from the same rows and what `learned` returned.
+
+        Raises
+        ------
+        KeyError, TypeError, ValueError
+            If the numbers are not those of such a model.
+        """
+        self._prepare(rows, pure)
+        self._enlarged = np.array(kept["enlarged"], dtype=np.float64)
+        self._half_thetas = [np.array(theta, dtype=np.float64) for theta in kept["halves"]]
+        self.gaussian_ = GroupedGaussianProcess(
+            terms=covariance_terms(len(self.adsorbates)),
+            noise=_NOISE,
+            start=[float(value) for value in kept["theta"]],
+            max_iter=0,
+        ).fit(self._X, self._z, noise_sd=self._enlarged)
+        self.trees_ = self._fit_trees(np.arange(len(self._z)))
+        self.weight_, self.element_sd_ = float(kept["weight"]), float(kept["element_sd"])
+        self.calibration_ = GroupCalibration.restored(kept["calibration"], _COMPOSITIONS)
+        self.element_calibration_ = GroupCalibration.restored(
+            kept["element_calibration"], _ELEMENTS
+        )
         return self
 
     def predict(self, frame: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
@@ -135,13 +182,12 @@ class AlloySurfaceModel:
 
     def _fit_gaussians(self) -> None:
         terms = covariance_terms(len(self.adsorbates))
-        self._half = np.array([zlib.crc32(c.encode()) % 2 for c in self.rows_["composition"]])
-        self._halves = []
+        self._half_thetas = []
         for half in (0, 1):
             rows = self._half == half
             tuned, _ = robust_gaussian(terms, self._X[rows], self._z[rows], self._noise[rows])
-            self._halves.append(self._on_all_rows(tuned.theta_, 0)[0])
-        middle = np.mean([half.theta_ for half in self._halves], axis=0)
+            self._half_thetas.append(tuned.theta_)
+        middle = np.mean(self._half_thetas, axis=0)
         self.gaussian_, self._enlarged = self._on_all_rows(middle, _REFINEMENT)
 
     def _on_all_rows(
@@ -167,7 +213,8 @@ class AlloySurfaceModel:
         """
         groups = self.rows_["composition"].to_numpy()
         mean, sd = np.empty(len(groups)), np.empty(len(groups))
-        for half, model in enumerate(self._halves):
+        for half, theta in enumerate(self._half_thetas):
+            model = self._on_all_rows(theta, 0)[0]
             rows = self._half != half
             part = model.leave_group_out(groups)
             mean[rows] = part[0][rows]
@@ -201,7 +248,7 @@ class AlloySurfaceModel:
         votes = group_weights(groups) / (1.0 + (self._noise / 0.3) ** 2)
         self.weight_ = blend_weight(self._z, gaussian, trees, votes)
         mean, spread = blend(gaussian, trees, left["sd_eV"].to_numpy() / self._unit, self.weight_)
-        self.calibration_ = GroupCalibration(state="compositions left out").fit(
+        self.calibration_ = GroupCalibration(state=_COMPOSITIONS).fit(
             self._z - mean, spread, groups
         )
 
@@ -253,7 +300,7 @@ class AlloySurfaceModel:
         residual = (left["energy_eV"] - left["predicted_eV"]).to_numpy(dtype=np.float64)
         unit = self._deviation(left)
         self.element_sd_ = float(np.median(np.abs(residual) / unit) / 0.6745)
-        self.element_calibration_ = GroupCalibration(state="elements left out").fit(
+        self.element_calibration_ = GroupCalibration(state=_ELEMENTS).fit(
             residual, np.hypot(left["sd_eV"], self.element_sd_ * unit), left["left_out"]
         )
         return self

@@ -18,7 +18,14 @@ from features.tables import read_table
 from screening.covariance import CovarianceTerm, FloatArray
 from screening.gaussian import GroupedGaussianProcess
 
-__all__ = ["PURE_DESCRIPTORS", "PureSurfaceModel", "PureSurfaces", "facet_openness", "pure_rows"]
+__all__ = [
+    "PURE_DESCRIPTORS",
+    "PureSurfaceModel",
+    "PureSurfaces",
+    "facet_openness",
+    "pure_rows",
+    "surface_adsorbates",
+]
 
 PURE_DESCRIPTORS = (
     "d_band_centre_eV",
@@ -56,6 +63,19 @@ def _ensemble_rows() -> pd.DataFrame:
     table = read_table("adsorption_ensembles")
     pure = table[(table["support"] == "slab") & table["metal_B"].isna()].copy()
     return pure.assign(metal=pure["metal_A"], structure="fcc prototype", facet="111", site="fcc")
+
+
+def surface_adsorbates() -> list[str]:
+    """Return the adsorbates that can be predicted, known before anything is trained.
+
+    Examples
+    --------
+    >>> "OH" in surface_adsorbates(), "OOH" in surface_adsorbates()
+    (True, False)
+    """
+    table = read_table("adsorption_pure")
+    own = table["source"].isin(_REFERENCE_SOURCES) & (table["quantity"] != "free energy")
+    return sorted(table.loc[own, "adsorbate"].unique().tolist())
 
 
 def pure_rows(without: Collection[str] = ()) -> pd.DataFrame:

@@ -15,7 +15,13 @@ from features.adsorption import coordination_slope
 from features.adsorption_descriptors import metal_descriptors
 from screening.covariance import FloatArray
 
-__all__ = ["TERRACE_COORDINATION", "SiteShifts", "open_face_slopes"]
+__all__ = [
+    "TERRACE_COORDINATION",
+    "SiteShifts",
+    "coordination_step",
+    "open_face_slopes",
+    "site_scatter_eV",
+]
 
 TERRACE_COORDINATION = {"fcc": 7.5, "hcp": 7.5, "bcc": 5.0}
 """Generalised coordination of the close-packed face, neighbours over 12 (fcc, hcp) or 8 (bcc)."""
@@ -23,6 +29,7 @@ TERRACE_COORDINATION = {"fcc": 7.5, "hcp": 7.5, "bcc": 5.0}
 _FACET_COORDINATION = {"211": 5.5, "110": 5.833, "100": 6.667}
 _PUBLISHED_SD = 0.02
 _SITE_SCATTER_EV = 0.09
+_SCATTER_RANGE = 0.5
 _FEWEST = 3
 _FAMILY = {"falsig2012": "RPBE", "falsig2008": "RPBE", "jiang2009": "RPBE"}
 
@@ -123,11 +130,40 @@ class SiteShifts:
         -------
         shift_eV, sd_eV : ndarray of shape (n_sites,)
         """
-        slopes = [self.slope(metal, adsorbate) for metal in parts]
-        shares = np.array(list(parts.values()))
-        slope = float(shares @ np.array([s for s, _ in slopes]))
-        sd = float(shares @ np.array([d for _, d in slopes]))
-        terrace = TERRACE_COORDINATION[structure]
-        step = (generalised_coordination / terrace - 1.0) * TERRACE_COORDINATION["fcc"]
-        scatter = np.where(np.abs(step) < 0.05, 0.0, _SITE_SCATTER_EV)
-        return slope * step, np.hypot(sd * step, scatter)
+        slope, sd = self.mean_slope(parts, adsorbate)
+        step = coordination_step(generalised_coordination, structure)
+        return slope * step, np.hypot(sd * step, site_scatter_eV(step))
+
+    def mean_slope(self, parts: dict[str, float], adsorbate: str) -> tuple[float, float]:
+        """Return the slope of a metal or alloy and its standard deviation, shared by all sites.
+
+        Parameters
+        ----------
+        parts : dict of str to float
+            Metals and their shares; slopes are averaged over them.
+        adsorbate : str
+        """
+        slopes = np.array([self.slope(metal, adsorbate) for metal in parts])
+        slope, sd = np.array(list(parts.values())) @ slopes
+        return float(slope), float(sd)
+
+
+def coordination_step(generalised_coordination: FloatArray, structure: str) -> FloatArray:
+    """Return how far sites lie from the close-packed terrace, in units of fcc coordination.
+
+    Examples
+    --------
+    >>> coordination_step(np.array([7.5, 5.5]), "fcc").tolist()
+    [0.0, -2.0]
+    """
+    terrace = TERRACE_COORDINATION[structure]
+    return np.asarray((generalised_coordination / terrace - 1.0) * TERRACE_COORDINATION["fcc"])
+
+
+def site_scatter_eV(step: FloatArray) -> FloatArray:
+    """Return how far single kinds of sites stray from the line, as a standard deviation.
+
+    Nothing at the terrace itself, whose energy is the surface's; the published scatter from about
+    one unit of coordination on.
+    """
+    return np.asarray(_SITE_SCATTER_EV * np.sqrt(-np.expm1(-np.abs(step) / _SCATTER_RANGE)))

@@ -93,8 +93,9 @@ def emission_warnings(model: SizeGapModel) -> list[str]:
         Empty if there is nothing to say. The offset of a source is the mean difference of its
         records from the prediction that leaves their material out, less that of the material.
     """
-    found = length_warnings(model.regressor_.gaussian_, "emission")
+    found = []
     for name, state in model.states_.items():
+        found += length_warnings(model.regressor(name).gaussian_, f"emission, {name}")
         found += blend_warnings(state.gaussian_weight, f"emission, {name}")
     left = model.left_out_frame("new")
     off = left["optical_gap_eV"] - left["predicted_gap_eV"]

@@ -6,6 +6,7 @@ two by the error that they make there.
 """
 
 from collections.abc import Sequence
+from copy import copy
 from dataclasses import dataclass
 from typing import Any, Self
 
@@ -141,6 +142,7 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         tree_weight: Any = None,
         start: Sequence[float] | None = None,
         max_iter: int = 200,
+        tree_rows: Any = None,
     ) -> Self:
         """Fit both regressors on all rows.
 
@@ -152,6 +154,8 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
             Rows' own noise for the Gaussian process; weights for the trees.
         start, max_iter
             Passed on to `GroupedGaussianProcess`.
+        tree_rows : array-like of bool or None, default None
+            Rows that the trees learn from; None for all.
 
         Returns
         -------
@@ -165,8 +169,30 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         self._columns = list(columns)
         self._X, self._y = X, np.asarray(y, dtype=np.float64)
         self._weight = None if tree_weight is None else np.asarray(tree_weight, dtype=float)
+        self._tree_rows = np.ones(len(y), bool) if tree_rows is None else np.asarray(tree_rows)
         self.trees_ = self._fit_trees(np.arange(len(self._y)))
         return self
+
+    def conditioned(self, X: Any, y: Any, noise_sd: Any = None) -> "BlendedRegressor":
+        """Return a copy whose Gaussian process holds other rows; parameters and trees are kept.
+
+        Parameters
+        ----------
+        X : array-like of shape (n_rows, n_columns)
+        y : array-like of shape (n_rows,)
+        noise_sd : array-like of shape (n_rows,) or None, default None
+
+        Returns
+        -------
+        BlendedRegressor
+            For predictions; it cannot leave groups out.
+        """
+        check_is_fitted(self)
+        other = copy(self)
+        other.gaussian_ = GroupedGaussianProcess(
+            terms=self.terms, noise=self.noise, start=self.gaussian_.theta_.tolist(), max_iter=0
+        ).fit(X, y, noise_sd=noise_sd)
+        return other
 
     def predict(self, X: Any, return_std: bool = False) -> Any:
         """Predict the blended mean and, if wanted, its standard deviation without row noise."""
@@ -218,6 +244,7 @@ class BlendedRegressor(RegressorMixin, BaseEstimator):
         return self.weigh_rows(self._y, left, groups, row_weights)
 
     def _fit_trees(self, rows: Any) -> HistGradientBoostingRegressor:
+        rows = rows[self._tree_rows[rows]]
         weight = None if self._weight is None else self._weight[rows]
         with threadpool_limits(1, user_api="openmp"):
             return boosted_trees(self.seed, **(self.tree_options or {})).fit(

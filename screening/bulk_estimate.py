@@ -16,13 +16,13 @@ import numpy as np
 import pandas as pd
 from scipy.special import ndtri
 
-from features.alloys import alloy_constants
+from features.alloys import alloy_row
 from features.charge import charge_balance
 from features.composition import composition_descriptors
 from features.elements import element_table
 from features.errors import UnknownMaterialError
 from features.formula import Compound, parse_formula
-from features.semiconductors import bulk_constants, match_material
+from features.semiconductors import bulk_constants, find_material, known_materials
 from features.solid_solutions import is_solid_solution
 from features.tables import read_table
 from features.trends import electron_mass_from_gap, optical_dielectric_from_gap
@@ -301,25 +301,30 @@ def compound_family(compound: Compound) -> str:
     return _families().get(_kind(compound), "unlisted")
 
 
-def _from_record(material: str) -> dict[str, Any] | None:
-    try:
-        name = match_material(material)
-    except UnknownMaterialError:
-        return None
-    row = dict(bulk_constants([name]).iloc[0])
-    confidence = read_table("bulk_semiconductors").set_index("material")["confidence"]
-    log_sd = _RECORD_LOG_SD[str(confidence[name])]
-    missing = str(row["filled"]).split(", ")
+@cache
+def _records() -> dict[str, dict[str, Any]]:
+    """Return the constants of every material on record with their spreads."""
+    names = known_materials()
+    table = bulk_constants(names)
+    confidence = read_table("bulk_semiconductors").set_index("material")["confidence"].to_dict()
     for quantity in QUANTITIES:
-        row[f"{quantity}_log_sd"] = 0.4 if quantity in missing else log_sd
-    return row | {"basis": "record"}
+        taken = table["filled"].str.split(", ").map(lambda parts, q=quantity: q in parts)
+        spread = [_RECORD_LOG_SD[str(confidence[name])] for name in table["material"]]
+        table[f"{quantity}_log_sd"] = np.where(taken, 0.4, spread)
+    rows = table.assign(basis="record").to_dict("records")
+    return {str(row["material"]): {str(k): v for k, v in row.items()} for row in rows}
+
+
+def _from_record(material: str) -> dict[str, Any] | None:
+    name = find_material(material)
+    return None if name is None else dict(_records()[name])
 
 
 def _from_alloy(material: str) -> dict[str, Any] | None:
     if not is_solid_solution(parse_formula(material)):
         return None
     try:
-        row = dict(alloy_constants([material]).iloc[0])
+        row = alloy_row(material)
     except UnknownMaterialError:
         return None
     for quantity in QUANTITIES:

@@ -126,6 +126,17 @@ class GroupCalibration:
         calibration._nodes()
         return calibration
 
+    def learned(self) -> dict[str, Any]:
+        """Return what was learned, as plain numbers for `restored`."""
+        factors = {str(level): value for level, value in self.factors_.items()}
+        return {"n_groups": self.n_groups_, "factors": factors}
+
+    @classmethod
+    def restored(cls, kept: Mapping[str, Any], state: str = "") -> Self:
+        """Rebuild a calibration from what `learned` returned."""
+        factors = {float(level): float(value) for level, value in kept["factors"].items()}
+        return cls.from_factors(factors, int(kept["n_groups"]), state)
+
     def _nodes(self) -> None:
         """Lay the map from the model's score to a standard normal score."""
         levels = sorted(self.factors_)
@@ -183,6 +194,13 @@ class GroupCalibration:
         inside = np.interp(size, self._z, self._normal)
         beyond = size * (self._normal[-1] / self._z[-1])
         return np.asarray(np.sign(z) * np.where(size > self._z[-1], beyond, inside))
+
+    def model_score(self, normal: Any) -> FloatArray:
+        """Map a standard normal score to (value - mean) / sd: the inverse of `normal_score`."""
+        size = np.abs(np.asarray(normal, dtype=float))
+        inside = np.interp(size, self._normal, self._z)
+        beyond = size * (self._z[-1] / self._normal[-1])
+        return np.asarray(np.sign(normal) * np.where(size > self._normal[-1], beyond, inside))
 
     def cdf(self, value: Any, mean: Any, sd: Any) -> FloatArray:
         """Return the calibrated chance that the truth lies below a value.

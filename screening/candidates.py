@@ -35,7 +35,7 @@ def choose_materials(
     materials : list of str
         Names as in the bulk table, in the order given or sorted.
     refused : pandas.DataFrame
-        Columns material, reason.
+        Columns material, reason, limit, verdict.
 
     Raises
     ------
@@ -53,7 +53,9 @@ def choose_materials(
     for name, family in zip(table["material"], table["family"], strict=True):
         reason = _refusal(name, family, wanted, recorded)
         if reason:
-            refused.append({"material": name, "reason": reason})
+            refused.append(
+                {"material": name, "reason": reason, "limit": "candidates", "verdict": "fail"}
+            )
         else:
             kept.append(name)
     if not kept:
@@ -65,7 +67,9 @@ def choose_materials(
                 do="allow more materials, families or elements",
             )
         )
-    return kept, pd.DataFrame(refused, columns=["material", "reason"])
+    return kept, pd.DataFrame(refused, columns=["material", "reason", "limit"]).assign(
+        verdict="fail"
+    )
 
 
 def _named(wanted: "Candidates") -> list[str]:
@@ -94,6 +98,8 @@ def _refusal(name: str, family: str, wanted: "Candidates", recorded: set[str]) -
     excluded = sorted(set(parse_formula(name).amounts) & set(wanted.exclude_elements))
     if excluded:
         return f"contains excluded {', '.join(excluded)}"
+    if name in wanted.exclude_materials:
+        return "excluded by name"
     if wanted.families and family not in wanted.families:
         return f"family {family} is not in the list"
     if not wanted.unmeasured and name not in recorded:

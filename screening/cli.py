@@ -118,20 +118,31 @@ def _specification_path(name: str) -> Path:
     return packaged_path("configs", f"{name}.toml")
 
 
+def _loaded(spec: str, results: Path | None) -> tuple[Any, Path | None]:
+    """Return the specification and the file of own results, named here or in it."""
+    from screening.specification import load_specification
+
+    path = _specification_path(spec)
+    specification = load_specification(path)
+    named = specification.laboratory.results
+    return specification, results or (path.parent / named if named else None)
+
+
 @app.command(epilog=_EPILOG)
 @_guarded
 def rank(
     spec: Annotated[str, typer.Argument(help="Specification: a .toml file or a packaged name.")],
     out: Annotated[Path, typer.Option(help="Folder for the results; made if missing.")],
     overwrite: Annotated[bool, typer.Option(help="Replace an earlier run in the folder.")] = False,
+    results: Annotated[Path | None, typer.Option(help="CSV of your own results.")] = None,
 ) -> None:
     """Rank candidates and write the shortlist, the report and the manifest.
 
+    Results (material, diameter_nm, property, value ...) join the model; the file is not altered.
+
     Example: fewnm rank red-emitter --out red-run
     """
-    from screening.specification import load_specification
-
-    specification = load_specification(_specification_path(spec))
+    specification, own = _loaded(spec, results)
     from screening.outputs import prepare_folder
     from screening.running import run_rank
 
@@ -139,26 +150,61 @@ def rank(
     if existed:
         prepare_folder(out, overwrite=overwrite)
     with _Stage(f"Ranking: {specification.title}"):
-        run = run_rank(specification, out, overwrite=overwrite)
+        run = run_rank(specification, out, overwrite=overwrite, results=own)
+    for finding in run.result.update.findings if run.result.update else ():
+        _say(f"Your results: {finding}.")
     _say(_shortlist_text(run.result))
     _say(f"Report: {run.folder / 'report.html'}")
 
 
 def _shortlist_text(result: Any) -> str:
     """Return the shortlist as a plain table."""
-    columns = ["rank", "material", "diameter_nm", "emission_nm", "fwhm_meV", "chance_in_window"]
-    columns += ["fraction_in_window", "size_tolerance_nm", "record_state"]
-    table = result.shortlist[columns].round(
-        {
-            "diameter_nm": 2,
-            "emission_nm": 0,
-            "fwhm_meV": 0,
-            "chance_in_window": 2,
-            "fraction_in_window": 2,
-            "size_tolerance_nm": 2,
-        }
-    )
+    digits = result.track.brief
+    table = result.shortlist[list(digits)].round(digits)
     return str(table.to_string(index=False))
+
+
+@app.command(epilog=_EPILOG)
+@_guarded
+def plan(
+    spec: Annotated[str, typer.Argument(help="Specification: a .toml file or a packaged name.")],
+    out: Annotated[Path, typer.Option(help="Folder for the plan; made if missing.")],
+    samples: Annotated[int | None, typer.Option(min=1, max=100, help="Samples to propose.")] = None,
+    results: Annotated[Path | None, typer.Option(help="CSV of your own results.")] = None,
+    overwrite: Annotated[bool, typer.Option(help="Replace an earlier plan in the folder.")] = False,
+) -> None:
+    """Propose the next samples, with the reason of each and the chance that one lands.
+
+    Example: fewnm plan red-emitter --samples 6 --out next
+    """
+    specification, own = _loaded(spec, results)
+    from screening.outputs import prepare_folder
+    from screening.planning_run import plan_text, run_plan
+
+    if out.exists():
+        prepare_folder(out, overwrite=overwrite)
+    with _Stage(f"Planning: {specification.title}"):
+        table = run_plan(specification, out, samples=samples, results=own, overwrite=overwrite)
+    _say(plan_text(table))
+    _say(f"Plan: {out / 'plan.csv'}")
+
+
+@app.command(epilog=_EPILOG)
+@_guarded
+def rehearse(
+    out: Annotated[Path, typer.Option(help="Folder for the campaigns; made if missing.")],
+    jobs: Annotated[int, typer.Option(min=1, max=256, help="Worker processes.")] = 2,
+    overwrite: Annotated[bool, typer.Option(help="Replace an earlier rehearsal.")] = False,
+) -> None:
+    """Replay discovery with every material hidden in turn, for every policy.
+
+    Takes some minutes on two cores. Example: fewnm rehearse --out rehearsal
+    """
+    from screening.planning_run import rehearsal_text, run_rehearsal
+
+    with _Stage("Hiding every material in turn"):
+        figures, learned = run_rehearsal(out, n_jobs=jobs, overwrite=overwrite)
+    typer.echo(rehearsal_text(figures, learned))
 
 
 @app.command(epilog=_EPILOG)

@@ -3,10 +3,12 @@
 The physics mean is the effective-mass gap with finite barriers; what it misses is learned per
 1/diameter (in eV nm) by a Gaussian process and boosted trees. A prediction is in one of two
 states: *on record* (the material has size data; residuals of left-out size ranges count) and
-*new* (residuals of left-out materials count).
+*new* (residuals of left-out materials count). For *new* the Gaussian process also reads the
+computed crystallites of materials with published tight-binding parameters, a second fidelity with
+a discrepancy of its own (M. C. Kennedy and A. O'Hagan, Biometrika 87, 1 (2000)).
 """
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Self
 
@@ -18,6 +20,7 @@ from features.size_gap import SMALLEST_DIAMETER_nm, size_band
 from screening.blending import BlendedRegressor, LeftOut, blend
 from screening.bulk_spread import particle_gap_spread_eV
 from screening.calibration import GroupCalibration
+from screening.computed_rows import COMPUTED, computed_rows
 from screening.covariance import CovarianceTerm, FloatArray
 
 __all__ = ["NEW", "ON_RECORD", "SizeGapModel", "State", "range_groups"]
@@ -44,8 +47,10 @@ _TERMS = (
     CovarianceTerm("source and size", (3,), labels=(6,), amplitude=0.03),
     CovarianceTerm("shape", labels=(7,), scale=8, amplitude=0.2),
 )
-_N_GAUSSIAN = 9
-_SOURCE = 6
+_COMPUTED = CovarianceTerm("computed", labels=(9,), amplitude=0.2)
+_N_SMOOTH = len(_CENTRES)
+_N_GAUSSIAN = 10
+_SOURCE = _N_SMOOTH + 2
 _FEWEST_ROWS = 3
 
 
@@ -79,6 +84,8 @@ class SizeGapModel:
         Seed of the trees.
     n_folds : int, default 10
         Folds of materials for the trees' left-out predictions.
+    computed : bool, default True
+        Whether *new* reads the computed crystallites.
 
     Attributes
     ----------
@@ -86,35 +93,68 @@ class SizeGapModel:
         Learned weight and calibration of both states, after `calibrate`.
     """
 
-    def __init__(self, seed: int = 0, n_folds: int = 10) -> None:
+    def __init__(self, seed: int = 0, n_folds: int = 10, *, computed: bool = True) -> None:
         self.seed = seed
         self.n_folds = n_folds
+        self.computed = computed
 
-    def fit(self, rows: pd.DataFrame, theta: Sequence[float] | None = None) -> Self:
-        """Fit both regressors.
+    def fit(self, rows: pd.DataFrame, theta: Mapping[str, Sequence[float]] | None = None) -> Self:
+        """Take the training rows; regressors are fitted when they are first needed.
 
         Parameters
         ----------
         rows : pandas.DataFrame
             As from ``features.size_gap.training_rows``.
-        theta : sequence of float or None, default None
-            Log parameters of the Gaussian process to keep; None learns them.
+        theta : mapping of str to sequence of float or None, default None
+            Log parameters of each state's Gaussian process to keep; None learns them.
 
         Returns
         -------
         self
         """
         self.rows_ = rows.reset_index(drop=True)
+        self._theta = dict(theta or {})
+        self._regressors: dict[str, BlendedRegressor] = {}
+        self._base: SizeGapModel | None = None
         self._label_codes()
-        X, mean, scale = self._columns(self.rows_, training=True)
+        _, mean, scale = self._columns(self.rows_, training=True)
         self._target = (self.rows_["optical_gap_eV"].to_numpy() - mean) / scale
         self._noise = self.rows_["noise_eV"].to_numpy() / scale
         self._scale = scale
-        votes = self.rows_["vote"] / self.rows_["vote"].groupby(self.rows_["material"]).transform(
+        return self
+
+    def regressor(self, state: str) -> BlendedRegressor:
+        """Return the fitted regressor of a state: *new* reads the computed rows too.
+
+        Returns
+        -------
+        BlendedRegressor
+        """
+        if state not in self._regressors:
+            self._regressors[state] = self._fit_regressor(state)
+        return self._regressors[state]
+
+    def _state_rows(self, state: str) -> pd.DataFrame:
+        """Return the rows that a state's regressor reads, measured ones first."""
+        if state == NEW and self.computed:
+            return pd.concat([self.rows_, computed_rows()], ignore_index=True)
+        return self.rows_
+
+    def _fit_regressor(self, state: str) -> BlendedRegressor:
+        rows = self._state_rows(state)
+        X, mean, scale = self._columns(rows, training=True)
+        target = (rows["optical_gap_eV"].to_numpy() - mean) / scale
+        noise = rows["noise_eV"].to_numpy() / scale
+        if self._base is not None:
+            return self._base.regressor(state).conditioned(X, target, noise)
+        measured = np.arange(len(rows)) < len(self.rows_)
+        theta = self._theta.get(state)
+        votes = rows["vote"] / rows["vote"].where(measured).groupby(rows["material"]).transform(
             "sum"
         )
-        self.regressor_ = BlendedRegressor(
-            terms=_TERMS,
+        terms = [*_TERMS, _COMPUTED] if state == NEW and self.computed else list(_TERMS)
+        return BlendedRegressor(
+            terms=terms,
             tree_columns=range(_N_GAUSSIAN, X.shape[1]),
             noise=0.02,
             tree_options={"max_bins": 48},
@@ -122,27 +162,55 @@ class SizeGapModel:
             seed=self.seed,
         ).fit(
             X,
-            self._target,
-            noise_sd=self._noise,
+            target,
+            noise_sd=noise,
             tree_weight=votes.to_numpy(),
             start=theta,
             max_iter=200 if theta is None else 0,
+            tree_rows=measured,
         )
-        return self
 
-    def calibrate(self) -> Self:
-        """Learn weight and calibration of both states from left-out groups."""
+    def calibrate(self, states: Sequence[str] = (NEW, ON_RECORD)) -> Self:
+        """Learn weight and calibration of states from left-out groups.
+
+        Parameters
+        ----------
+        states : sequence of str, default both
+        """
         materials = self.rows_["material"].to_numpy()
         ranges = range_groups(self.rows_).to_numpy()
-        self.left_out_ = {
-            NEW: self.regressor_.left_out(materials),
-            ON_RECORD: self.regressor_.left_out(np.where(ranges == "", materials, ranges)),
-        }
-        self.states_ = {
-            NEW: self._learn_state(NEW, materials),
-            ON_RECORD: self._learn_state(ON_RECORD, ranges),
-        }
+        left = {NEW: materials, ON_RECORD: np.where(ranges == "", materials, ranges)}
+        counted = {NEW: materials, ON_RECORD: ranges}
+        self.left_out_ = {name: self._leave_out(name, left[name]) for name in states}
+        self.states_ = {name: self._learn_state(name, counted[name]) for name in states}
         return self
+
+    def conditioned(self, more: pd.DataFrame) -> "SizeGapModel":
+        """Return the model with more rows, parameters, trees and calibration kept.
+
+        Parameters
+        ----------
+        more : pandas.DataFrame
+            As from ``screening.measurements.measured_rows``.
+
+        Returns
+        -------
+        SizeGapModel
+            Materials that come with the rows are *on record*, where the Gaussian process has the
+            weight that left-out size ranges gave it.
+        """
+        model = SizeGapModel(self.seed, self.n_folds, computed=self.computed)
+        model.fit(pd.concat([self.rows_, more], ignore_index=True))
+        model._base, model.states_ = self, self.states_
+        return model
+
+    def _leave_out(self, state: str, labels: Any) -> LeftOut:
+        """Leave measured groups out; computed rows stay in, a group of their own."""
+        regressor = self.regressor(state)
+        n = len(labels)
+        n_computed = len(regressor.gaussian_.y_) - n
+        left = regressor.left_out(np.concatenate([labels, np.full(n_computed, "computed rows")]))
+        return LeftOut(left.gaussian[:n], left.trees[:n], left.sd[:n])
 
     def _learn_state(self, state: str, labels: Any) -> State:
         """Weigh and calibrate on the labelled rows, one vote a left-out group."""
@@ -150,7 +218,7 @@ class SizeGapModel:
         left = self.left_out_[state]
         part = LeftOut(left.gaussian[use], left.trees[use], left.sd[use])
         groups, votes = labels[use], self.rows_["vote"].to_numpy()[use]
-        weight = self.regressor_.weigh_rows(self._target[use], part, groups, votes)
+        weight = BlendedRegressor.weigh_rows(self._target[use], part, groups, votes)
         mean, sd = part.blend(weight)
         total = np.hypot(sd, self._noise[use])
         calibration = GroupCalibration(state=f"state {state!r}").fit(
@@ -196,34 +264,84 @@ class SizeGapModel:
             record_state, with the caller's index.
         """
         X, mean, scale = self._columns(candidates, training=False)
-        gaussian, trees, sd = self.regressor_.parts(X)
-        state = self.record_state(candidates["material"])
-        weights = {name: part.gaussian_weight for name, part in self.states_.items()}
-        weight = state.map(weights).to_numpy(dtype=np.float64)
-        learned, spread = blend(gaussian, trees, sd, np.asarray(weight, dtype=np.float64))
-        noise = self.regressor_.gaussian_.noise_
-        bulk_sd = _constants_spread_eV(candidates) / scale
-        total = np.sqrt(spread**2 + noise**2 + bulk_sd**2) * scale
+        record_state = self.record_state(candidates["material"])
+        learned, spread = np.empty(len(candidates)), np.empty(len(candidates))
+        for name, asked in self._rows_by_state(candidates):
+            regressor = self.regressor(name)
+            gaussian, trees, sd = regressor.parts(X[asked])
+            learned[asked], sd = blend(gaussian, trees, sd, self.states_[name].gaussian_weight)
+            spread[asked] = np.hypot(sd, regressor.gaussian_.noise_)
+        total = np.hypot(spread, _constants_spread_eV(candidates) / scale) * scale
         return pd.DataFrame(
             {
                 "optical_gap_eV": mean + learned * scale,
                 "model_sd_eV": total,
-                "record_state": state,
+                "record_state": record_state,
             },
             index=candidates.index,
         )
 
     def design(self, candidates: pd.DataFrame) -> FloatArray:
-        """Return the regressor's columns of candidates, as of samples from no known source."""
+        """Return the regressors' columns of candidates, as of samples from no known source."""
         return self._columns(candidates, training=False)[0]
 
     def scatter_sd_eV(self, candidates: pd.DataFrame) -> FloatArray:
         """Return the scatter between sources and samples of one pair, which no model narrows."""
-        gaussian = self.regressor_.gaussian_
-        fitted = gaussian.term_parameters()
-        between = sum(fitted[t.name].amplitude ** 2 for t in _TERMS if _SOURCE in t.labels)
-        scale = self._columns(candidates, training=False)[2]
-        return np.asarray(np.sqrt(between + gaussian.noise_**2) * scale, dtype=np.float64)
+        scatter = np.empty(len(candidates))
+        for name, rows in self._rows_by_state(candidates):
+            gaussian = self.regressor(name).gaussian_
+            fitted = gaussian.term_parameters()
+            between = sum(fitted[t.name].amplitude ** 2 for t in _TERMS if _SOURCE in t.labels)
+            scatter[rows] = np.sqrt(between + gaussian.noise_**2)
+        return scatter * self.scale_of(candidates)
+
+    def joint_covariance(self, candidates: pd.DataFrame) -> FloatArray:
+        """Return how the errors of candidates vary together, uncalibrated, in eV squared.
+
+        Parameters
+        ----------
+        candidates : pandas.DataFrame
+            As for `predict`.
+
+        Returns
+        -------
+        ndarray of shape (n_candidates, n_candidates)
+            Covariance of the Gaussian processes; candidates of one material that has no records
+            share its unknown offset. Candidates of different states count as independent.
+        """
+        X, _, scale = self._columns(candidates, training=False)
+        labels = {
+            _N_SMOOTH: candidates["family"],
+            _N_SMOOTH + 1: candidates["material"],
+            _N_SMOOTH + 3: candidates["shape"] + " " + candidates["material"],
+        }
+        for column, names in labels.items():
+            unseen = X[:, column] < 0.0
+            # any numbers will do that no training row carries
+            X[unseen, column] = 10_000.0 + pd.factorize(names)[0][unseen]
+        covariance = np.zeros((len(X), len(X)))
+        for name, rows in self._rows_by_state(candidates):
+            block = self.regressor(name).gaussian_.posterior_covariance(X[rows])
+            covariance[np.ix_(rows, rows)] = block
+        return np.asarray(covariance * np.outer(scale, scale), dtype=np.float64)
+
+    def measurement_noise_eV(self, candidates: pd.DataFrame) -> FloatArray:
+        """Return the standard deviation of a sample about the smooth law, eV.
+
+        Returns
+        -------
+        ndarray of shape (n_candidates,)
+        """
+        noise = np.empty(len(candidates))
+        for name, rows in self._rows_by_state(candidates):
+            noise[rows] = self.regressor(name).gaussian_.noise_
+        return noise * self.scale_of(candidates)
+
+    def _rows_by_state(self, candidates: pd.DataFrame) -> list[tuple[str, Any]]:
+        """Return the positions of the candidates of each state that occurs."""
+        state = self.record_state(candidates["material"]).to_numpy()
+        found = [(name, np.flatnonzero(state == name)) for name in self.states_]
+        return [(name, rows) for name, rows in found if len(rows)]
 
     def interval(
         self, predicted: pd.DataFrame, level: float = 0.9
@@ -253,10 +371,11 @@ class SizeGapModel:
 
     def _label_codes(self) -> None:
         sources = self.rows_["source"] + " " + self.rows_["material"]
+        materials = pd.concat([self.rows_["material"], computed_rows()["material"]])
         shapes = self.rows_["shape"] + " " + self.rows_["material"]
         self._codes = {
             "family": _codes(self.rows_["family"]),
-            "material": _codes(self.rows_["material"]),
+            "material": _codes(materials),
             "source": _codes(sources),
             "shape": _codes(shapes),
         }
@@ -268,19 +387,29 @@ class SizeGapModel:
         features = ConfinementFeatures().fit_transform(frame[_CONSTANTS])
         smooth = [(features[name] - centre) / width for name, (centre, width) in _CENTRES.items()]
         source = frame["source"] + " " + frame["material"] if training else None
+        no_label = pd.Series(-1.0, index=frame.index)
         labels: list[pd.Series] = [
             frame["family"].map(self._codes["family"]),
             frame["material"].map(self._codes["material"]),
-            pd.Series(-1, index=frame.index)
-            if source is None
-            else source.map(self._codes["source"]),
+            no_label if source is None else source.map(self._codes["source"]),
             (frame["shape"] + " " + frame["material"]).map(self._codes["shape"]),
             frame["shape"].ne("sphere").astype(float),
+            frame["source"].map({COMPUTED: 0.0}) if training else no_label,
         ]
         block = np.column_stack([*smooth, *[label.fillna(-1) for label in labels], features])
         mean = frame["gap_eV"].to_numpy() + features["finite_barrier_shift_eV"].to_numpy()
-        scale = 1.0 / np.maximum(frame["diameter_nm"].to_numpy(dtype=float), SMALLEST_DIAMETER_nm)
-        return block.astype(np.float64), mean, scale
+        return block.astype(np.float64), mean, self.scale_of(frame)
+
+    @staticmethod
+    def scale_of(frame: pd.DataFrame) -> FloatArray:
+        """Return the energy (eV) that one unit of the learned quantity stands for.
+
+        Returns
+        -------
+        ndarray of shape (n_rows,)
+        """
+        diameter = frame["diameter_nm"].to_numpy(dtype=np.float64)
+        return np.asarray(1.0 / np.maximum(diameter, SMALLEST_DIAMETER_nm))
 
 
 def _constants_spread_eV(candidates: pd.DataFrame) -> FloatArray:

@@ -18,7 +18,7 @@ __all__ = [
     "text_hash",
 ]
 
-MODEL_FORMAT = 1
+MODEL_FORMAT = 2
 """Raised with every change of features, terms or training that alters predictions."""
 
 

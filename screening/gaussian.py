@@ -145,6 +145,24 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
         variance = self._prior_variance(X) - np.einsum("ij,ij->j", half, half)
         return mean, np.sqrt(np.maximum(variance, 0.0))
 
+    def posterior_covariance(self, X: Any) -> FloatArray:
+        """Return the covariance of the noise-free values of rows, given the training rows.
+
+        Parameters
+        ----------
+        X : array-like of shape (n_rows, n_columns)
+            Rows whose labels agree vary together, also where no training row has the label.
+
+        Returns
+        -------
+        ndarray of shape (n_rows, n_rows)
+        """
+        check_is_fitted(self)
+        X = validate_data(self, X, dtype=np.float64, reset=False)
+        cross = self._cross(X)
+        half = solve_triangular(self._cholesky[0], cross.T, lower=True, check_finite=False)
+        return self._covariance(X, X, same_rows=True) - half.T @ half
+
     def leave_group_out(self, groups: Any) -> tuple[FloatArray, FloatArray]:
         """Predict every training row from the rows of all other groups, parameters kept.
 

@@ -10,12 +10,15 @@ from features.errors import NothingQualifiesError, explain
 from features.formula import parse_formula
 from features.hazards import caution_text
 from features.semiconductors import has_indirect_gap
-from screening.candidates import candidate_grid, choose_materials
 from screening.dots import ON_RECORD, SizeGapModel
-from screening.scores import Window, describe, score
+from screening.limits import REJECTED, judge
+from screening.tracks import track_of
+from screening.trade_offs import add_supply
 
 if TYPE_CHECKING:
+    from screening.laboratory import LabUpdate
     from screening.specification import Specification
+    from screening.tracks import Track
 
 __all__ = ["COLUMNS", "RankResult", "caution_column", "nearest_records", "rank"]
 
@@ -36,11 +39,18 @@ COLUMNS = (
     "chance_in_window",
     "fraction_in_window",
     "size_tolerance_nm",
+    "batch_yield",
+    "size_spread_needed",
     "record_state",
+    "limits",
+    "hazard_class",
+    "supply_class",
+    "is_unbeaten",
     "nearest_source",
+    "supply",
     "cautions",
 )
-"""Columns of the shortlist, in order."""
+"""Columns of the shortlist of quantum dots, in order."""
 
 _INDIRECT = "indirect bulk gap, emission may be weak and broad; "
 
@@ -53,19 +63,30 @@ class RankResult:
     ----------
     specification : Specification
     shortlist : pandas.DataFrame
-        Columns `COLUMNS`, best first.
+        Columns of the track (`COLUMNS` for quantum dots), best first.
     scored : pandas.DataFrame
         Every candidate with its scores.
     rejected : pandas.DataFrame
-        Columns material, reason.
-    model : SizeGapModel
+        Columns `screening.limits.REJECTED`.
+    model : SizeGapModel or AdsorptionModel
+    update : LabUpdate or None
+        What the laboratory's own results changed, where there are any.
+    before : pandas.DataFrame or None
+        The shortlist as it was without them.
     """
 
     specification: "Specification"
     shortlist: pd.DataFrame
     scored: pd.DataFrame
     rejected: pd.DataFrame
-    model: SizeGapModel
+    model: Any
+    update: "LabUpdate | None" = None
+    before: pd.DataFrame | None = None
+
+    @property
+    def track(self) -> "Track":
+        """The track that the specification belongs to."""
+        return track_of(self.specification)
 
     def to_frame(self) -> pd.DataFrame:
         """Return a copy of the shortlist."""
@@ -77,7 +98,7 @@ class RankResult:
         return float(1.0 - np.prod(1.0 - chances))
 
     def plot(self, ax: Any = None) -> Any:
-        """Draw gap against size with the window and the shortlist.
+        """Draw the candidates against size.
 
         Parameters
         ----------
@@ -87,22 +108,20 @@ class RankResult:
         -------
         matplotlib.axes.Axes
         """
-        from screening.reporting.figures import draw_map  # noqa: PLC0415 - pyplot is slow to load
-
-        return draw_map(self, ax)
+        return self.track.draw(self, ax)
 
     def _repr_html_(self) -> str:
         return str(self.shortlist.to_html(index=False, escape=True, float_format="{:.3f}".format))
 
 
-def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
-    """Rank the candidates of a specification by their calibrated chance.
+def rank(specification: "Specification", model: Any) -> RankResult:
+    """Rank the candidates of a specification.
 
     Parameters
     ----------
     specification : Specification
-    model : SizeGapModel
-        Fitted and calibrated.
+    model : SizeGapModel or AdsorptionModel
+        Of the specification's track, fitted and calibrated.
 
     Returns
     -------
@@ -111,56 +130,56 @@ def rank(specification: "Specification", model: SizeGapModel) -> RankResult:
     Raises
     ------
     SpecificationError
-        If a material or family is unknown.
+        If a material, family, shape or adsorbate is unknown.
     NothingQualifiesError
         If no candidate reaches the least chance.
     """
-    wanted = specification.candidates
-    materials, refused = choose_materials(wanted, model.rows_["material"])
-    low, high = specification.target.energies_eV
-    window = Window(specification.target.quantity, low, high)
-    grid = candidate_grid(materials, wanted)
-    described = describe(model, grid, specification.laboratory.size_spread)
-    scored = score(model, described, window)
-    best = _shortlist(scored, specification)
-    missed = _missed(scored, specification)
+    track = track_of(specification)
+    grid, refused = track.candidates(specification, model)
+    scored = track.score(specification, model, grid)
+    judgement = judge(scored, specification.limits)
+    scored["is_allowed"] = judgement.allowed
+    allowed = scored[judgement.allowed]
+    best = _shortlist(allowed, specification, track)
+    missed = _missed(allowed, specification)
+    turned_down = judgement.rejected(scored)
     if best.empty:
-        raise NothingQualifiesError(_nothing(scored, specification))
+        raise NothingQualifiesError(_nothing(scored, turned_down, specification))
+    best["limits"] = judgement.notes(scored.index.get_indexer(best.index).tolist())
     best.insert(0, "rank", np.arange(1, len(best) + 1))
-    best["nearest_source"] = nearest_records(best, model)
-    best["cautions"] = caution_column(best["material"])
+    best = add_supply(track.finish(best, model))
+    rejected = pd.concat([refused, turned_down, missed], ignore_index=True)
     return RankResult(
         specification,
-        best[list(COLUMNS)].reset_index(drop=True),
+        best[list(track.columns)].reset_index(drop=True),
         scored,
-        pd.concat([refused, missed], ignore_index=True),
+        rejected.reindex(columns=list(REJECTED)),
         model,
     )
 
 
-def _ordered(scored: pd.DataFrame) -> pd.DataFrame:
-    """Sort by chance, then by tolerance, then by name and size, so that ties fall the same way."""
-    keyed = scored.assign(
-        _chance=scored["chance_in_window"].round(9), _room=scored["size_tolerance_nm"].round(9)
-    )
-    order = ["_chance", "_room", "material", "diameter_nm"]
-    ordered = keyed.sort_values(order, ascending=[False, False, True, True], kind="stable")
-    return ordered.drop(columns=["_chance", "_room"])
+def _ordered(scored: pd.DataFrame, track: "Track") -> pd.DataFrame:
+    """Sort by the track's keys, so that ties fall the same way."""
+    keys, rising = track.order(scored)
+    order = keys.sort_values(list(keys.columns), ascending=rising, kind="stable").index
+    return scored.loc[order]
 
 
-def _shortlist(scored: pd.DataFrame, specification: "Specification") -> pd.DataFrame:
-    """Take the best diameters of each material, apart by the stated spacing."""
+def _shortlist(
+    scored: pd.DataFrame, specification: "Specification", track: "Track"
+) -> pd.DataFrame:
+    """Take the best diameters of each material, of one shape apart by the stated spacing."""
     cut = specification.shortlist
-    ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)])
-    taken: dict[str, list[float]] = {}
+    ordered = _ordered(scored[scored["chance_in_window"] >= max(cut.least_chance, 1e-12)], track)
+    taken: dict[str, list[tuple[str, float]]] = {}
     rows = []
-    for index, material, diameter in zip(
-        ordered.index, ordered["material"], ordered["diameter_nm"], strict=True
+    for index, material, shape, diameter in zip(
+        ordered.index, ordered["material"], ordered["shape"], ordered["diameter_nm"], strict=True
     ):
-        sizes = taken.setdefault(material, [])
-        apart = all(abs(diameter - size) >= cut.spacing_nm for size in sizes)
-        if apart and len(sizes) < cut.per_material:
-            sizes.append(diameter)
+        own = taken.setdefault(material, [])
+        apart = all(abs(diameter - size) >= cut.spacing_nm for kind, size in own if kind == shape)
+        if apart and len(own) < cut.per_material:
+            own.append((shape, diameter))
             rows.append(index)
         if len(rows) == cut.length:
             break
@@ -173,10 +192,16 @@ def _missed(scored: pd.DataFrame, specification: "Specification") -> pd.DataFram
     best = scored.groupby("material", sort=True)["chance_in_window"].max()
     short = best[best < max(least, 1e-12)]
     reasons = [f"best chance {value:.2g} is below {least:g}" for value in short]
-    return pd.DataFrame({"material": short.index, "reason": reasons})
+    limit = "shortlist.least_chance"
+    table = {"material": short.index, "reason": reasons, "limit": limit, "verdict": "fail"}
+    return pd.DataFrame(table | {"chance_in_window": short.to_numpy()})
 
 
-def _nothing(scored: pd.DataFrame, specification: "Specification") -> str:
+def _nothing(
+    scored: pd.DataFrame, turned_down: pd.DataFrame, specification: "Specification"
+) -> str:
+    if not turned_down.empty:
+        return _all_turned_down(turned_down)
     best = scored.iloc[int(np.argmax(scored["chance_in_window"]))]
     return explain(
         "no candidate qualifies",
@@ -185,6 +210,19 @@ def _nothing(scored: pd.DataFrame, specification: "Specification") -> str:
         found=f"at best {best['chance_in_window']:.3g} ({best['material']}, "
         f"{best['diameter_nm']:g} nm)",
         do="widen the window, allow more materials or lower least_chance",
+    )
+
+
+def _all_turned_down(turned_down: pd.DataFrame) -> str:
+    worst = turned_down["limit"].value_counts()
+    best = turned_down.iloc[int(turned_down["chance_in_window"].to_numpy().argmax())]
+    counts = ", ".join(f"{name} {count} materials" for name, count in worst.items())
+    return explain(
+        "no candidate qualifies",
+        where="limits",
+        found=f"{counts}; the best of them, {best['material']} at {best['diameter_nm']:g} nm "
+        f"(chance {best['chance_in_window']:.2g}): {best['reason']}",
+        do="loosen a limit, or allow more materials",
     )
 
 

@@ -1,9 +1,9 @@
 """How far a candidate is from the data, and whether errors were ever measured that far out.
 
-Distance is taken in the covariance of the Gaussian process: 0 for a sample that it holds for the
-same as a record, 1 for one that shares nothing with any record. The limits are no choice of ours:
-they are the distances at which left-out size ranges and left-out materials were predicted, so that
-beyond them no error was ever measured.
+Distance is taken in the covariance of the Gaussian process of measured records: 0 for a sample
+that it holds for the same as a record, 1 for one that shares nothing with any record. The limits
+are no choice of ours: they are the distances at which left-out size ranges and left-out materials
+were predicted, so that beyond them no error was ever measured.
 """
 
 from dataclasses import dataclass
@@ -14,7 +14,7 @@ import pandas as pd
 
 from screening.calibration import group_weights
 from screening.covariance import FloatArray
-from screening.dots import SizeGapModel, range_groups
+from screening.dots import ON_RECORD, SizeGapModel, range_groups
 
 __all__ = ["EDGE", "FAR", "NEAR", "ReachLimits", "distance_to_data", "reach_limits"]
 
@@ -69,7 +69,7 @@ def distance_to_data(model: SizeGapModel, candidates: pd.DataFrame) -> pd.DataFr
     >>> distance_to_data(model, pair_frame(pairs))["reach"].tolist()
     ['near']
     """
-    correlation = model.regressor_.gaussian_.correlation(model.design(candidates))
+    correlation = model.regressor(ON_RECORD).gaussian_.correlation(model.design(candidates))
     distance = _distance(correlation.max(axis=1))
     on_record = candidates["family"].isin(set(model.rows_["family"])).to_numpy()
     limits = reach_limits(model)
@@ -94,7 +94,7 @@ def reach_limits(model: SizeGapModel) -> ReachLimits:
     ReachLimits
     """
     rows = model.rows_
-    correlation = model.regressor_.gaussian_.correlation(model.design(rows))
+    correlation = model.regressor(ON_RECORD).gaussian_.correlation(model.design(rows))
     near = _left_out_quantile(correlation, range_groups(rows).to_numpy(), rows["vote"])
     edge = _left_out_quantile(correlation, rows["material"].to_numpy(), rows["vote"])
     return ReachLimits(near, max(near, edge))

@@ -1,16 +1,17 @@
 """One run from specification to files."""
 
 import json
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 import pandas as pd
 
-from features.size_gap import training_rows
+from features.errors import SpecificationError, explain
 from features.tables import read_table
-from screening.candidates import choose_materials
-from screening.fingerprint import text_hash
+from screening.fingerprint import file_hash, text_hash
+from screening.laboratory import join_results
+from screening.measurements import read_measurements
 from screening.outputs import (
     build_manifest,
     csv_text,
@@ -21,9 +22,10 @@ from screening.outputs import (
 )
 from screening.ranking import RankResult, rank
 from screening.specification import Specification
-from screening.trained import dot_fingerprint, evidence_hash, trained_dots
+from screening.tracks import track_of
+from screening.trained import evidence_hash
 
-__all__ = ["RankRun", "held_out_figures", "run_rank"]
+__all__ = ["RankRun", "held_out_figures", "model_hash", "ranked", "run_rank"]
 
 
 @dataclass(frozen=True)
@@ -49,7 +51,13 @@ def held_out_figures() -> pd.DataFrame:
     return current.drop(columns="evidence_hash").reset_index(drop=True)
 
 
-def run_rank(specification: Specification, folder: Path, *, overwrite: bool = False) -> RankRun:
+def run_rank(
+    specification: Specification,
+    folder: Path,
+    *,
+    overwrite: bool = False,
+    results: Path | None = None,
+) -> RankRun:
     """Rank a specification and write the results.
 
     Parameters
@@ -59,6 +67,8 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
         Output folder; made if missing.
     overwrite : bool, default False
         Replace an earlier run.
+    results : pathlib.Path or None, default None
+        The laboratory's own results, see `screening.measurements`; read, never altered.
 
     Returns
     -------
@@ -68,15 +78,14 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
     ------
     OutputError
         If the folder cannot take the results.
+    TableError
+        If own results are faulty.
     SpecificationError, NothingQualifiesError
         As `screening.ranking.rank`; nothing is written then.
     """
     from screening.reporting.report import render_report  # noqa: PLC0415 - figures load slowly
 
-    # What cannot be ranked is said before a model is trained for it.
-    choose_materials(specification.candidates, training_rows()["material"])
-    result = rank(specification, trained_dots(specification.seed))
-    model_hash = dot_fingerprint(specification.seed)
+    result = ranked(specification, results)
     table = csv_text(result.shortlist)
     prepare_folder(folder, overwrite=overwrite)
     write_atomically(folder / "shortlist.csv", table)
@@ -84,9 +93,12 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
     write_parquet(folder / "shortlist.parquet", result.shortlist)
     write_atomically(folder / "rejected.csv", csv_text(result.rejected))
     files = ["shortlist.csv", "shortlist.json", "shortlist.parquet", "rejected.csv"]
+    if result.update is not None:
+        write_atomically(folder / "own_results.csv", csv_text(result.update.results))
+        files.append("own_results.csv")
     manifest = build_manifest(
         specification=specification.model_dump(mode="json"),
-        model_hash=model_hash,
+        model_hash=model_hash(specification, results),
         folder=folder,
         files=files,
         result_hash=text_hash(table),
@@ -98,12 +110,55 @@ def run_rank(specification: Specification, folder: Path, *, overwrite: bool = Fa
     return RankRun(result, folder, manifest)
 
 
+def ranked(specification: Specification, results: Path | None = None) -> RankResult:
+    """Rank a specification, with own results joined where there are any.
+
+    Parameters
+    ----------
+    specification : Specification
+    results : pathlib.Path or None, default None
+
+    Returns
+    -------
+    RankResult
+        With ``update`` and ``before`` where results were given.
+
+    Raises
+    ------
+    TableError, SpecificationError, NothingQualifiesError
+        As for `run_rank`.
+    """
+    # What cannot be ranked is said before a model is trained for it.
+    track = track_of(specification)
+    track.check(specification)
+    if results is None:
+        return rank(specification, track.model(specification))
+    if specification.target.quantity not in {"emission", "optical_gap"}:
+        raise SpecificationError(
+            explain(
+                "own results cannot be used for this target",
+                where=results.name,
+                expected="a target emission or optical_gap",
+            )
+        )
+    measured = read_measurements(results)
+    model = track.model(specification)
+    update = join_results(model, measured)
+    before = rank(specification, model).shortlist
+    return replace(rank(specification, update.model), update=update, before=before)
+
+
+def model_hash(specification: Specification, results: Path | None = None) -> str:
+    """Return the hash of all that the model of a run follows from, own results included."""
+    plain = track_of(specification).model_hash(specification)
+    return plain if results is None else text_hash(plain + file_hash(results))
+
+
 def _warnings(result: RankResult) -> list[str]:
     """Say what a reader should know before acting."""
-    notes = []
-    new = result.shortlist["record_state"].eq("new").sum()
-    if new:
-        notes.append(f"{new} of {len(result.shortlist)} rows are materials without size data")
+    notes = result.track.warnings(result)
+    if result.update is not None:
+        notes += result.update.findings
     if result.shortlist["chance_in_window"].iloc[0] < 0.5:
         notes.append("no candidate is more likely to hit the window than to miss it")
     return notes

@@ -9,9 +9,15 @@ from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
-from scipy.special import ndtr, ndtri
+from scipy.special import ndtri
 
 from features.emission import ensemble_fwhm_eV, stokes_shifts, wavelength_nm
+from features.size_control import (
+    SizeShape,
+    fraction_inside,
+    fraction_inside_integrated,
+    room_for_share,
+)
 from screening.calibration import GroupCalibration
 from screening.covariance import FloatArray
 from screening.dots import SizeGapModel
@@ -31,7 +37,9 @@ class Window:
     high_eV: float
 
 
-def describe(model: SizeGapModel, candidates: pd.DataFrame, size_spread: float) -> pd.DataFrame:
+def describe(
+    model: SizeGapModel, candidates: pd.DataFrame, sizes: SizeShape | float
+) -> pd.DataFrame:
     """Predict gap, emission and linewidth of candidates.
 
     Parameters
@@ -40,16 +48,17 @@ def describe(model: SizeGapModel, candidates: pd.DataFrame, size_spread: float) 
         Fitted and calibrated.
     candidates : pandas.DataFrame
         As from `screening.candidates.pair_frame`.
-    size_spread : float
-        Standard deviation of the diameter over its mean.
+    sizes : SizeShape or float
+        Shape of the size distribution, or the standard deviation of a normal one over its mean.
 
     Returns
     -------
     pandas.DataFrame
         The candidates plus optical_gap_eV and emission_eV with their 90 % ends (the emission's hold
         the Stokes shift's uncertainty too, as its chance does), emission_nm, fwhm_meV,
-        slope_eV_per_nm, size_sd_eV, model_sd_eV, stokes_sd_eV, record_state.
+        single_dot_fwhm_eV, slope_eV_per_nm, size_sd_eV, model_sd_eV, stokes_sd_eV, record_state.
     """
+    spread = sizes if isinstance(sizes, float) else sizes.spread
     frame = candidates.join(model.predict(candidates))
     low, high = model.interval(frame, _LEVEL)
     frame["optical_gap_low_eV"], frame["optical_gap_high_eV"] = low, high
@@ -64,9 +73,10 @@ def describe(model: SizeGapModel, candidates: pd.DataFrame, size_spread: float) 
     )
     frame["emission_low_eV"], frame["emission_high_eV"] = model.interval(emitting, _LEVEL)
     frame["slope_eV_per_nm"] = _slope(model, candidates)
-    frame["size_sd_eV"] = frame["slope_eV_per_nm"].abs() * size_spread * frame["diameter_nm"]
+    frame["size_sd_eV"] = frame["slope_eV_per_nm"].abs() * spread * frame["diameter_nm"]
+    frame["single_dot_fwhm_eV"] = stokes["single_dot_fwhm_eV"]
     frame["fwhm_meV"] = 1000.0 * ensemble_fwhm_eV(
-        stokes["single_dot_fwhm_eV"], frame["slope_eV_per_nm"], size_spread * frame["diameter_nm"]
+        stokes["single_dot_fwhm_eV"], frame["slope_eV_per_nm"], spread * frame["diameter_nm"]
     )
     return frame
 
@@ -82,8 +92,14 @@ def _slope(model: SizeGapModel, candidates: pd.DataFrame) -> pd.Series:
     return (ends[0] - ends[1]) / (2.0 * step)
 
 
-def score(model: SizeGapModel, described: pd.DataFrame, window: Window) -> pd.DataFrame:
-    """Add chance_in_window, fraction_in_window and size_tolerance_nm.
+def score(
+    model: SizeGapModel,
+    described: pd.DataFrame,
+    window: Window,
+    sizes: SizeShape | float | None = None,
+    least_fraction: float = 0.5,
+) -> pd.DataFrame:
+    """Add chance_in_window, fraction_in_window, size_tolerance_nm and batch_yield.
 
     Parameters
     ----------
@@ -91,11 +107,16 @@ def score(model: SizeGapModel, described: pd.DataFrame, window: Window) -> pd.Da
     described : pandas.DataFrame
         As from `describe`.
     window : Window
+    sizes : SizeShape, float or None, default None
+        A measured shape is integrated over; otherwise sizes are normal with the described spread.
+    least_fraction : float, default 0.5
+        Share of particles inside the window from which a batch counts as good.
 
     Returns
     -------
     pandas.DataFrame
-        A copy with three columns more.
+        A copy with four columns more; batch_yield is the chance that a batch is good, for normal
+        sizes of the described spread.
     """
     frame = described.copy()
     emits = window.quantity == "emission"
@@ -103,31 +124,34 @@ def score(model: SizeGapModel, described: pd.DataFrame, window: Window) -> pd.Da
     stokes_sd = frame["stokes_sd_eV"].to_numpy() if emits else np.zeros(len(frame))
     sd = np.hypot(frame["model_sd_eV"].to_numpy(), stokes_sd)
     size_sd = frame["size_sd_eV"].to_numpy()
-    chance, fraction = np.empty(len(frame)), np.empty(len(frame))
+    slope_eV = (frame["slope_eV_per_nm"] * frame["diameter_nm"]).to_numpy()
+    middle, half = 0.5 * (window.low_eV + window.high_eV), 0.5 * (window.high_eV - window.low_eV)
+    reach = room_for_share(half, size_sd, least_fraction)
+    chance, fraction, good = np.empty((3, len(frame)))
     for name, state in model.states_.items():
         rows = frame["record_state"].to_numpy() == name
-        calibration = state.calibration
-        chance[rows] = calibration.chance_between(
-            window.low_eV, window.high_eV, centre[rows], sd[rows]
-        )
-        fraction[rows] = _fraction(calibration, window, centre[rows], sd[rows], size_sd[rows])
+        between = state.calibration.chance_between
+        chance[rows] = between(window.low_eV, window.high_eV, centre[rows], sd[rows])
+        near, far = middle - reach[rows], middle + reach[rows]
+        good[rows] = np.nan_to_num(between(near, far, centre[rows], sd[rows]))
+        widened = _widened(state.calibration, sd[rows])
+        if isinstance(sizes, SizeShape):
+            fraction[rows] = fraction_inside_integrated(
+                (window.low_eV, window.high_eV), centre[rows], widened, slope_eV[rows], sizes
+            )
+        else:
+            fraction[rows] = fraction_inside(
+                window.low_eV, window.high_eV, centre[rows], np.hypot(widened, size_sd[rows])
+            )
     frame["chance_in_window"], frame["fraction_in_window"] = chance, fraction
+    frame["batch_yield"] = good
     room = np.minimum(centre - window.low_eV, window.high_eV - centre)
     slope = np.maximum(frame["slope_eV_per_nm"].abs().to_numpy(), 1e-6)
     frame["size_tolerance_nm"] = np.maximum(room, 0.0) / slope
     return frame
 
 
-def _fraction(
-    calibration: GroupCalibration,
-    window: Window,
-    centre: FloatArray,
-    sd: FloatArray,
-    size_sd: FloatArray,
-) -> FloatArray:
-    """Return the expected share of particles inside, calibrated spread and size in quadrature."""
+def _widened(calibration: GroupCalibration, sd: FloatArray) -> FloatArray:
+    """Return the standard deviation of the normal distribution with the calibrated interval."""
     level = max(calibration.factors_)
-    widened = sd * calibration.factor(level) / ndtri(0.5 + level / 2.0)
-    total = np.hypot(widened, size_sd)
-    inside = ndtr((window.high_eV - centre) / total) - ndtr((window.low_eV - centre) / total)
-    return np.asarray(inside)
+    return np.asarray(sd * calibration.factor(level) / ndtri(0.5 + level / 2.0))

@@ -9,17 +9,25 @@ from difflib import get_close_matches
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_validator
+from pydantic import BaseModel, Discriminator, Field, Tag, ValidationError, model_validator
 
 from features.emission import HC_eV_nm
 from features.errors import SpecificationError, explain
+from features.size_control import SizeShape, measured_sizes
 from features.size_gap import LARGEST_DIAMETER_nm, SMALLEST_DIAMETER_nm
+from screening.limit_rules import METAL_LIMITS, OPTICAL_LIMITS, Limits
+from screening.plan_rules import Plan
+from screening.space_rules import Space
+from screening.strict_part import StrictPart
+from screening.surface_target import SURFACE_QUANTITIES, SurfaceTarget, target_kind
+from screening.user_tables import collect_faults, numeric_column, read_user_table
 
 __all__ = [
     "Candidates",
     "Laboratory",
     "Shortlist",
     "Specification",
+    "SurfaceTarget",
     "Target",
     "load_specification",
     "parse_specification",
@@ -32,13 +40,7 @@ Element = Annotated[str, Field(pattern=r"^[A-Z][a-z]?$")]
 Pair = Annotated[list[float], Field(min_length=2, max_length=2)]
 
 
-class _Part(BaseModel):
-    model_config = ConfigDict(
-        extra="forbid", frozen=True, allow_inf_nan=False, str_strip_whitespace=True, strict=False
-    )
-
-
-class Target(_Part):
+class Target(StrictPart):
     """What the samples must hit.
 
     Exactly one of ``window_nm`` and ``window_eV``; both ends belong to the window.
@@ -78,14 +80,32 @@ class Target(_Part):
         return HC_eV_nm / high, HC_eV_nm / low
 
 
-class Candidates(_Part):
+TargetChoice = Annotated[
+    Annotated[Target, Tag("emission")] | Annotated[SurfaceTarget, Tag("surface")],
+    Discriminator(target_kind),
+]
+"""Which of the two tracks a target belongs to is told by its keys."""
+
+_TARGETS: Mapping[Any, type[BaseModel]] = {"emission": Target, "surface": SurfaceTarget}
+
+
+class Candidates(StrictPart):
     """Which materials and diameters may be made."""
 
     materials: list[str] = Field(
         default_factory=list, max_length=10_000, description="formulas; empty for all in the tables"
     )
     families: list[str] = Field(default_factory=list, description="families; empty for all")
+    spaces: list[Space] = Field(
+        default_factory=list, max_length=50, description="compositions to enumerate"
+    )
+    shapes: list[str] = Field(
+        default_factory=list, max_length=50, description="metal particles; empty for the usual one"
+    )
     exclude_elements: list[Element] = Field(default_factory=list, description="element symbols")
+    exclude_materials: list[str] = Field(
+        default_factory=list, max_length=10_000, description="formulas left out"
+    )
     diameter_nm: Pair = Field(
         default=[SMALLEST_DIAMETER_nm, 12.0], description="smallest and largest core diameter, nm"
     )
@@ -97,25 +117,64 @@ class Candidates(_Part):
     @model_validator(mode="after")
     def _sizes(self) -> Self:
         low, high = self.diameter_nm
-        if not SMALLEST_DIAMETER_nm <= low <= high <= LARGEST_DIAMETER_nm:
+        if not 0.0 < low <= high <= LARGEST_DIAMETER_nm:
             raise ValueError(
-                f"diameter_nm out of range: expected {SMALLEST_DIAMETER_nm} <= low <= high <= "
-                f"{LARGEST_DIAMETER_nm} nm, where the model holds, found {self.diameter_nm}"
+                f"diameter_nm out of range: expected 0 < low <= high <= {LARGEST_DIAMETER_nm} nm, "
+                f"where the model holds, found {self.diameter_nm}"
             )
         if (high - low) / self.step_nm > _MOST_DIAMETERS:
             raise ValueError(f"step_nm is too fine: expected at most {_MOST_DIAMETERS} diameters")
         return self
 
 
-class Laboratory(_Part):
-    """What the laboratory can hold."""
+class Sizes(StrictPart):
+    """A measured size distribution; in a file it is named by the path of its CSV table."""
+
+    diameter_nm: list[float] = Field(min_length=2, max_length=1_000_000)
+    count: list[float] | None = Field(default=None, max_length=1_000_000)
+
+    @model_validator(mode="after")
+    def _can_be(self) -> Self:
+        self.shape()
+        return self
+
+    def shape(self) -> SizeShape:
+        """Return the shape of the distribution."""
+        return measured_sizes(self.diameter_nm, self.count)
+
+
+class Laboratory(StrictPart):
+    """What the laboratory can hold.
+
+    Sizes are normally distributed with ``size_spread``, or as measured in the file ``sizes``.
+    """
 
     size_spread: float = Field(
         default=0.07, gt=0.0, le=0.5, description="standard deviation of the diameter over its mean"
     )
+    sizes: Sizes | None = Field(
+        default=None, description="CSV of a measured distribution: diameter_nm, optional count"
+    )
+    least_fraction: float = Field(
+        default=0.5, gt=0.0, lt=1.0, description="share of particles inside for a good batch"
+    )
+
+    results: str | None = Field(
+        default=None, max_length=4096, description="CSV of own results, beside the specification"
+    )
+
+    @model_validator(mode="after")
+    def _one_distribution(self) -> Self:
+        if self.sizes is not None and "size_spread" in self.model_fields_set:
+            raise ValueError("expected size_spread or sizes, found both")
+        return self
+
+    def size_shape(self) -> SizeShape | float:
+        """Return the measured shape of the size distribution, or the spread of a normal one."""
+        return self.size_spread if self.sizes is None else self.sizes.shape()
 
 
-class Shortlist(_Part):
+class Shortlist(StrictPart):
     """How the answer is cut."""
 
     length: int = Field(default=10, ge=1, le=1000, description="most rows")
@@ -128,22 +187,50 @@ class Shortlist(_Part):
     )
 
 
-class Specification(_Part):
+class Specification(StrictPart):
     """One run."""
 
     title: str = Field(default="Untitled", min_length=1, max_length=200, description="heading")
-    target: Target
+    target: TargetChoice
     candidates: Candidates = Candidates()
     laboratory: Laboratory = Laboratory()
+    limits: Limits = Limits()
+    plan: Plan = Plan()
     shortlist: Shortlist = Shortlist()
     seed: int = Field(default=0, ge=0, le=2**31 - 1, description="seed of the trees")
+
+    @model_validator(mode="after")
+    def _of_one_track(self) -> Self:
+        """Refuse candidates and limits that only the other track knows."""
+        wanted = self.candidates
+        if isinstance(self.target, SurfaceTarget):
+            if wanted.families or wanted.spaces:
+                raise ValueError(
+                    "candidates.families and spaces are for quantum dots: name metals instead"
+                )
+        elif wanted.shapes:
+            raise ValueError("candidates.shapes is for metal particles: leave it out")
+        elif wanted.diameter_nm[0] < SMALLEST_DIAMETER_nm:
+            raise ValueError(
+                f"candidates.diameter_nm out of range: expected {SMALLEST_DIAMETER_nm} nm or more, "
+                f"where the model holds, found {wanted.diameter_nm}"
+            )
+        wrong = OPTICAL_LIMITS if isinstance(self.target, SurfaceTarget) else METAL_LIMITS
+        if asked := [name for name in self.limits.asked() if name in wrong]:
+            raise ValueError(
+                f"limits.{asked[0]} has no meaning for the target {self.target.quantity}: "
+                "take it out"
+            )
+        return self
 
 
 def _known_keys(location: tuple[Any, ...]) -> list[str]:
     """Return the keys that the table at a location knows."""
     fields: Mapping[str, Any] = Specification.model_fields
     for step in location[:-1]:
-        annotation = fields[step].annotation if step in fields else None
+        annotation = _TARGETS.get(step) or (fields[step].annotation if step in fields else None)
+        if step == "target":
+            continue
         if not (isinstance(annotation, type) and issubclass(annotation, BaseModel)):
             return []
         fields = annotation.model_fields
@@ -153,7 +240,7 @@ def _known_keys(location: tuple[Any, ...]) -> list[str]:
 def _message(error: Any, where: str) -> str:
     """Turn one validation error into what, where, expected, found, what to do."""
     location = tuple(error["loc"])
-    path = ".".join(str(step) for step in location) or "top level"
+    path = ".".join(str(step) for step in location if step not in _TARGETS) or "top level"
     place = f"{where}, {path}" if where else path
     if error["type"] == "extra_forbidden":
         known = _known_keys(location)
@@ -168,8 +255,10 @@ def _message(error: Any, where: str) -> str:
         return explain(f"missing key {location[-1]!r}", where=place, do="add it")
     if error["type"] == "value_error":
         return explain(str(error["ctx"]["error"]), where=place)
-    found = repr(error.get("input"))
-    return explain("wrong value", where=place, expected=error["msg"], found=found[:80])
+    found, expected = repr(error.get("input")), error["msg"]
+    if path == "target.quantity":
+        expected += f" for quantum dots, {' or '.join(map(repr, SURFACE_QUANTITIES))} for catalysts"
+    return explain("wrong value", where=place, expected=expected, found=found[:80])
 
 
 def parse_specification(data: Mapping[str, Any], where: str = "") -> Specification:
@@ -241,4 +330,21 @@ def load_specification(path: Path) -> Specification:
         raise SpecificationError(
             explain("not a TOML file", where=str(path), found=str(error))
         ) from None
-    return parse_specification(data, path.name)
+    return parse_specification(_with_tables(data, path.parent), path.name)
+
+
+def _with_tables(data: dict[str, Any], folder: Path) -> dict[str, Any]:
+    """Put the numbers of a named table in the place of its path, which counts from the file."""
+    laboratory: Any = data.get("laboratory")
+    if not isinstance(laboratory, dict) or not isinstance(laboratory.get("sizes"), str):
+        return data
+    name = laboratory["sizes"]
+    table = read_user_table(folder / name, ("diameter_nm",), ("count",))
+    columns, faults = {}, []
+    for column in table.columns:
+        low = 0.1 if column == "diameter_nm" else 0.0
+        columns[column], wrong = numeric_column(table, column, low, 1e9, "")
+        faults += wrong
+    collect_faults(name, faults)
+    sizes = {column: values.tolist() for column, values in columns.items()}
+    return {**data, "laboratory": {**laboratory, "sizes": sizes}}

@@ -18,7 +18,13 @@ from screening.outputs import write_atomically
 
 __all__ = ["DOT_TABLES", "cache_folder", "dot_fingerprint", "evidence_hash", "trained_dots"]
 
-DOT_TABLES = ("bulk_semiconductors", "size_gap_records", "stokes_shifts")
+DOT_TABLES = (
+    "bulk_semiconductors",
+    "computed_dots",
+    "size_gap_records",
+    "stokes_shifts",
+    "tight_binding",
+)
 
 
 def cache_folder() -> Path:
@@ -68,9 +74,9 @@ def trained_dots(seed: int = 0) -> SizeGapModel:
 def _read(path: Path) -> dict[str, Any] | None:
     try:
         kept = json.loads(path.read_text(encoding="utf-8"))
-        theta = [float(value) for value in kept["theta"]]
+        theta = {name: [float(v) for v in values] for name, values in kept["theta"].items()}
         states = {name: _state(name, part) for name, part in kept["states"].items()}
-    except (OSError, ValueError, KeyError, TypeError):
+    except (OSError, ValueError, KeyError, TypeError, AttributeError):
         return None
     return {"theta": theta, "states": states}
 
@@ -99,7 +105,8 @@ def _keep(path: Path, model: SizeGapModel) -> None:
         }
         for name, state in model.states_.items()
     }
-    kept = {"theta": model.regressor_.gaussian_.theta_.tolist(), "states": states}
+    theta = {name: model.regressor(name).gaussian_.theta_.tolist() for name in states}
+    kept = {"theta": theta, "states": states}
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
         write_atomically(path, json.dumps(kept, indent=1))

@@ -16,11 +16,22 @@ from matplotlib.figure import Figure
 if TYPE_CHECKING:
     from screening.ranking import RankResult
 
-__all__ = ["MOST_LINES", "curve_numbers", "draw_intervals", "draw_map", "figure_svg", "new_axes"]
+__all__ = [
+    "COLOURS",
+    "MARKS",
+    "MOST_LINES",
+    "STYLES",
+    "clipped",
+    "curve_numbers",
+    "draw_intervals",
+    "draw_map",
+    "figure_svg",
+    "new_axes",
+]
 
-_COLOURS = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#E69F00", "#56B4E9")
-_STYLES = ("-", "--", "-.", ":")
-_MARKS = ("o", "s", "^", "D", "v", "P")
+COLOURS = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#E69F00", "#56B4E9")
+STYLES = ("-", "--", "-.", ":")
+MARKS = ("o", "s", "^", "D", "v", "P")
 MOST_LINES = 6
 """Most materials on the map."""
 _LONGEST_NAME = 24
@@ -42,7 +53,7 @@ def _end(column: str, end: str) -> str:
     return f"{column.removesuffix('_eV')}_{end}_eV"
 
 
-def _clipped(name: str) -> str:
+def clipped(name: str) -> str:
     """Keep a long name on the figure, and a dollar sign from starting a formula."""
     short = name if len(name) <= _LONGEST_NAME else f"{name[:_LONGEST_NAME]}…"
     return short.replace("$", r"\$")
@@ -77,14 +88,14 @@ def draw_map(result: "RankResult", ax: Any = None) -> Any:
 def _draw_material(
     ax: Any, result: "RankResult", material: str, position: int, column: str
 ) -> None:
-    colour = _COLOURS[position % len(_COLOURS)]
+    colour = COLOURS[position % len(COLOURS)]
     curve = result.scored[result.scored["material"].eq(material)]
     ax.plot(
         curve["diameter_nm"],
         curve[column],
-        _STYLES[position % len(_STYLES)],
+        STYLES[position % len(STYLES)],
         color=colour,
-        label=_clipped(material),
+        label=clipped(material),
     )
     ax.fill_between(
         curve["diameter_nm"],
@@ -97,7 +108,7 @@ def _draw_material(
     records = result.model.rows_[result.model.rows_["material"].eq(material)]
     offset = float((curve["optical_gap_eV"] - curve[column]).iloc[0])
     measured = records["record_kind"].eq("measured point")
-    for rows, mark in ((measured, _MARKS[position % len(_MARKS)]), (~measured, "|")):
+    for rows, mark in ((measured, MARKS[position % len(MARKS)]), (~measured, "|")):
         ax.plot(
             records.loc[rows, "diameter_nm"],
             records.loc[rows, "optical_gap_eV"] - offset,
@@ -143,7 +154,7 @@ def draw_intervals(result: "RankResult", ax: Any = None) -> Any:
             listed[column][rows], place[rows], xerr=errors, fmt=mark, capsize=3, label=state
         )
     names = [
-        f"{rank}. {_clipped(material)} {diameter:.2f} nm"
+        f"{rank}. {clipped(material)} {diameter:.2f} nm"
         for rank, material, diameter in zip(
             listed["rank"], listed["material"], listed["diameter_nm"], strict=True
         )

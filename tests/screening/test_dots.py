@@ -72,12 +72,12 @@ def test_permuting_the_targets_of_a_left_out_material_changes_nothing_learned(ro
     )
     first, second = (SizeGapModel().fit(table[~own]) for table in (rows, permuted))
     np.testing.assert_array_equal(
-        first.regressor_.gaussian_.theta_, second.regressor_.gaussian_.theta_
+        first.regressor(NEW).gaussian_.theta_, second.regressor(NEW).gaussian_.theta_
     )
     asked = pair_frame(pd.DataFrame({"material": ["CdSe"], "diameter_nm": [3.0]}))
     np.testing.assert_array_equal(
-        first.regressor_.parts(first._columns(asked, training=False)[0]),
-        second.regressor_.parts(second._columns(asked, training=False)[0]),
+        first.regressor(NEW).parts(first._columns(asked, training=False)[0]),
+        second.regressor(NEW).parts(second._columns(asked, training=False)[0]),
     )
 
 

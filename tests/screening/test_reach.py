@@ -3,7 +3,7 @@ import pandas as pd
 import pytest
 
 from screening.candidates import pair_frame
-from screening.dots import SizeGapModel
+from screening.dots import ON_RECORD, SizeGapModel
 from screening.reach import EDGE, FAR, NEAR, distance_to_data, reach_limits
 
 
@@ -34,7 +34,7 @@ def test_a_block_gives_the_same_as_one_row_at_a_time(model):
 
 def test_a_family_without_a_record_is_never_near(rows):
     kept = rows[rows["family"].ne("II-VI")]
-    learned = SizeGapModel().fit(kept, theta=SizeGapModel().fit(kept).regressor_.gaussian_.theta_)
+    learned = SizeGapModel().fit(kept)
     found = distance_to_data(learned, candidates(["CdSe", "InP"], [3.0, 3.0]))
     assert found["family_on_record"].tolist() == [False, True]
     assert found["reach"].iloc[0] in {EDGE, FAR}
@@ -43,7 +43,7 @@ def test_a_family_without_a_record_is_never_near(rows):
 def test_nineteen_in_twenty_left_out_materials_lie_inside_the_edge(model):
     # By construction of the limit: refit nothing, measure each material against the others.
     rows = model.rows_
-    correlation = model.regressor_.gaussian_.correlation(model.design(rows))
+    correlation = model.regressor(ON_RECORD).gaussian_.correlation(model.design(rows))
     materials = rows["material"].to_numpy()
     same = materials[:, None] == materials[None, :]
     nearest = np.where(same, -np.inf, correlation).max(axis=1)
@@ -64,7 +64,7 @@ def test_without_a_size_range_to_leave_out_nothing_is_near(rows):
 
 
 def test_prior_correlation_of_a_training_row_with_itself_is_one(model):
-    process = model.regressor_.gaussian_
+    process = model.regressor(ON_RECORD).gaussian_
     inside = process.correlation(process.X_[:5])
     assert inside.shape == (5, len(process.X_))
     assert np.diag(inside[:, :5]) == pytest.approx(np.ones(5), abs=1e-9)

@@ -4,7 +4,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from features.errors import SpecificationError
+from features.errors import SpecificationError, TableError
 from features.tables import packaged_path
 from screening.specification import load_specification, parse_specification
 
@@ -97,3 +97,39 @@ def test_a_file_that_is_no_specification_is_refused(tmp_path, raw, message):
 def test_a_missing_file_is_named(tmp_path):
     with pytest.raises(SpecificationError, match=r"gone\.toml"):
         load_specification(tmp_path / "gone.toml")
+
+
+def test_a_measured_size_distribution_is_read_beside_the_specification(tmp_path):
+    (tmp_path / "sizes.csv").write_text("diameter_nm,count\n3.8,10\n4.0,20\n4.2,10\n")
+    file = tmp_path / "spec.toml"
+    file.write_text('[target]\nwindow_nm = [625, 635]\n[laboratory]\nsizes = "sizes.csv"\n')
+    shape = load_specification(file).laboratory.size_shape()
+    assert shape.ratio.tolist() == pytest.approx([0.95, 1.0, 1.05])
+    assert shape.weight.tolist() == pytest.approx([0.25, 0.5, 0.25])
+
+
+@pytest.mark.parametrize(
+    ("table", "error", "words"),
+    [
+        ("diameter_nm\n4.0\n4.0\n", SpecificationError, "too few sizes"),
+        ("diameter_nm,count\n4.0,-1\n4.2,3\n", TableError, "row 2: count"),
+        ("size\n4.0\n", TableError, "missing column 'diameter_nm'"),
+        (None, TableError, "cannot read the table"),
+    ],
+)
+def test_a_size_distribution_that_cannot_be_is_refused(tmp_path, table, error, words):
+    if table is not None:
+        (tmp_path / "sizes.csv").write_text(table)
+    file = tmp_path / "spec.toml"
+    file.write_text('[target]\nwindow_nm = [625, 635]\n[laboratory]\nsizes = "sizes.csv"\n')
+    with pytest.raises(error, match=words):
+        load_specification(file)
+
+
+def test_a_spread_and_a_distribution_together_are_refused(tmp_path):
+    (tmp_path / "sizes.csv").write_text("diameter_nm\n4.0\n4.2\n")
+    file = tmp_path / "spec.toml"
+    laboratory = 'sizes = "sizes.csv"\nsize_spread = 0.05\n'
+    file.write_text(f"[target]\nwindow_nm = [625, 635]\n[laboratory]\n{laboratory}")
+    with pytest.raises(SpecificationError, match="size_spread or sizes, found both"):
+        load_specification(file)

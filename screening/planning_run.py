@@ -1,0 +1,125 @@
+"""Plans and rehearsals as runs: files under one folder, and their tables as text."""
+
+import json
+from pathlib import Path
+
+import pandas as pd
+
+from features.size_gap import training_rows
+from screening.fingerprint import text_hash
+from screening.measurements import measured_rows, read_measurements
+from screening.outputs import (
+    SCHEMA_VERSION,
+    build_manifest,
+    csv_text,
+    json_text,
+    prepare_folder,
+    write_atomically,
+)
+from screening.planning import plan_samples
+from screening.rehearsal import rehearse, summarise_rehearsal
+from screening.running import model_hash, ranked
+from screening.specification import Specification
+from screening.trained import evidence_hash
+
+__all__ = ["plan_text", "rehearsal_text", "run_plan", "run_rehearsal"]
+
+
+def run_plan(
+    specification: Specification,
+    folder: Path,
+    *,
+    samples: int | None = None,
+    results: Path | None = None,
+    overwrite: bool = False,
+) -> pd.DataFrame:
+    """Choose the next samples and write them.
+
+    Parameters
+    ----------
+    specification : Specification
+    folder : pathlib.Path
+        Output folder; made if missing.
+    samples : int or None, default None
+        Number of samples; None for the specification's.
+    results : pathlib.Path or None, default None
+        The laboratory's own results so far.
+    overwrite : bool, default False
+        Replace an earlier plan.
+
+    Returns
+    -------
+    pandas.DataFrame
+        Columns `screening.planning.PLAN_COLUMNS`.
+
+    Raises
+    ------
+    OutputError, TableError, SpecificationError, NothingQualifiesError
+        As for `screening.running.run_rank`.
+    """
+    result = ranked(specification, results)
+    made = None if results is None else measured_rows(read_measurements(results))
+    plan = plan_samples(result, made, samples)
+    table = csv_text(plan)
+    prepare_folder(folder, overwrite=overwrite)
+    write_atomically(folder / "plan.csv", table)
+    write_atomically(folder / "plan.json", json_text(plan, "plan"))
+    manifest = build_manifest(
+        specification=specification.model_dump(mode="json"),
+        model_hash=model_hash(specification, results),
+        folder=folder,
+        files=["plan.csv", "plan.json"],
+        result_hash=text_hash(table),
+        warnings=list(result.update.findings) if result.update else [],
+    )
+    write_atomically(folder / "manifest.json", json.dumps(manifest, indent=2, ensure_ascii=False))
+    return plan
+
+
+def plan_text(plan: pd.DataFrame) -> str:
+    """Return a plan as readable lines, one sample each."""
+    lines = [
+        f"{row.sample:>2}. {row.material} {row.diameter_nm:.2f} nm ({row.emission_nm:.0f} nm "
+        f"emission): {row.reason}"
+        for row in plan.itertuples()
+    ]
+    return "\n".join(lines)
+
+
+def run_rehearsal(
+    folder: Path, *, n_jobs: int = 1, overwrite: bool = False
+) -> tuple[pd.DataFrame, pd.DataFrame]:
+    """Replay discovery on the packaged tables and write every campaign.
+
+    Parameters
+    ----------
+    folder : pathlib.Path
+    n_jobs : int, default 1
+    overwrite : bool, default False
+
+    Returns
+    -------
+    figures, learned : pandas.DataFrame
+        As from `screening.rehearsal.summarise_rehearsal` and `screening.rehearsal.rehearse`.
+
+    Raises
+    ------
+    OutputError
+        If the folder cannot take the results.
+    """
+    prepare_folder(folder, overwrite=overwrite)
+    campaigns, learned = rehearse(training_rows(), n_jobs=n_jobs)
+    figures = summarise_rehearsal(campaigns)
+    write_atomically(folder / "campaigns.csv", csv_text(campaigns))
+    write_atomically(folder / "policies.csv", csv_text(figures))
+    write_atomically(folder / "after_three_samples.csv", csv_text(learned))
+    content = {"schema_version": SCHEMA_VERSION, "kind": "rehearsal", "hash": evidence_hash()}
+    write_atomically(folder / "manifest.json", json.dumps(content, indent=2))
+    return figures, learned
+
+
+def rehearsal_text(figures: pd.DataFrame, learned: pd.DataFrame) -> str:
+    """Return both tables as text: policies, then what three samples teach."""
+    columns = ["mean_absolute_error_eV", "coverage_90", "mean_width_90_eV"]
+    after = learned.groupby("n_samples")[columns].mean()
+    return f"{figures.round(3).to_string(index=False)}\n\n{after.round(3).to_string()}"
