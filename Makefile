@@ -22,10 +22,12 @@ test: $(BIN)/fewnm
 	$(BIN)/lint-imports
 	$(BIN)/python -m pytest -n 2 --dist loadfile
 
-# The figures that the report and the README print; takes some minutes.
+# The figures that the report, the README and docs/how-sure.md print, and the last two's pages;
+# takes some minutes.
 evidence: $(BIN)/fewnm
 	$(BIN)/fewnm audit --out build/audit --overwrite
 	cp build/audit/held_out_figures.csv datasets/held_out_figures.csv
+	$(BIN)/python -m screening.how_sure
 
 # Crystallites by tight binding; rows on record are kept, a run that was stopped goes on.
 tables: $(BIN)/fewnm

@@ -7,25 +7,37 @@ parameters learned without a whole fold of them. Energies in eV. Run as
 """
 
 import sys
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from typing import Any
 
 import numpy as np
 import pandas as pd
+from joblib import Parallel, delayed
 from numpy.typing import NDArray
 from sklearn.ensemble import ExtraTreesRegressor
 from sklearn.model_selection import GroupKFold
+from threadpoolctl import threadpool_limits
 
-from features.adsorption_descriptors import metal_descriptors
-from features.tables import read_table
 from screening.adsorption_alloys import AlloySurfaceModel, robust_gaussian
+from screening.adsorption_baselines import (
+    ALLOY_LADDER,
+    METAL_BASELINES,
+    PLAIN_LEARNERS,
+    composition_averages,
+    ladder_of_alloys,
+    metal_baselines,
+    mixing_rule,
+    plain_learners,
+)
 from screening.adsorption_design import FAMILIES, SurfaceDesign, alloy_rows, covariance_terms
 from screening.adsorption_pure import PureSurfaceModel, pure_rows
-from screening.calibration import GroupCalibration
+from screening.calibration import LEVELS, GroupCalibration
 from screening.covariance import FloatArray
 
 __all__ = [
     "ALLOY_BASELINES",
     "METAL_BASELINES",
+    "MIXING_RULE",
     "evaluate_adsorption",
     "evaluate_compositions",
     "evaluate_elements",
@@ -33,16 +45,16 @@ __all__ = [
     "summarise_adsorption",
 ]
 
-METAL_BASELINES = ("mean", "linear in the d-band centre", "nearest group neighbour")
-"""Baselines on pure metals, as columns of the evaluation."""
-
 ALLOY_BASELINES = ("mean", "trees on composition averages")
 """Baselines on alloys, as columns of the evaluation."""
 
-_LEVEL = 0.9
+MIXING_RULE = "mixing rule of pure surfaces"
+"""Physics alone, on alloys."""
+
 _FEWEST_ELEMENTS = 12
 _WELL_SAMPLED_SD_EV = 0.25
-_COLUMNS = ["material", "group", "adsorbate", "energy_eV", "model", "sd_eV", "low_90%", "high_90%"]
+_COLUMNS = ["material", "group", "adsorbate", "energy_eV", "model", "sd_eV"]
+_COLUMNS += [f"{end}_{level:.0%}" for level in LEVELS for end in ("low", "high")]
 
 
 def _folds(labels: pd.Series, n_splits: int) -> Iterator[set[str]]:
@@ -55,8 +67,11 @@ def _folds(labels: pd.Series, n_splits: int) -> Iterator[set[str]]:
 def _with_interval(
     rows: pd.DataFrame, mean: FloatArray, sd: FloatArray, calibration: GroupCalibration
 ) -> pd.DataFrame:
-    low, high = calibration.interval(mean, sd, _LEVEL)
-    return rows.assign(**{"model": mean, "sd_eV": sd, "low_90%": low, "high_90%": high})
+    found = rows.assign(model=mean, sd_eV=sd)
+    for level in LEVELS:
+        ends = calibration.interval(mean, sd, level)
+        found[f"low_{level:.0%}"], found[f"high_{level:.0%}"] = ends
+    return found
 
 
 def _close_packed(model: PureSurfaceModel, rows: pd.DataFrame) -> pd.DataFrame:
@@ -64,7 +79,9 @@ def _close_packed(model: PureSurfaceModel, rows: pd.DataFrame) -> pd.DataFrame:
     return rows[model.rows_["reference"] & (model.rows_["openness"] == 0.0)]
 
 
-def evaluate_metals(n_splits: int = 6, rows: pd.DataFrame | None = None) -> pd.DataFrame:
+def evaluate_metals(
+    n_splits: int = 6, rows: pd.DataFrame | None = None, *, n_jobs: int = 1
+) -> pd.DataFrame:
     """Predict the close-packed face of every metal with the metal left out.
 
     Parameters
@@ -73,20 +90,30 @@ def evaluate_metals(n_splits: int = 6, rows: pd.DataFrame | None = None) -> pd.D
         Folds of metals for the covariance parameters and the calibration.
     rows : pandas.DataFrame or None, default None
         As from `pure_rows`; None for the packaged tables.
+    n_jobs : int, default 1
+        Workers; the result does not depend on it.
 
     Returns
     -------
     pandas.DataFrame
         One row a metal and adsorbate of the reference sources: material, group (the metal),
-        adsorbate, energy_eV, model, sd_eV, low_90%, high_90% and `METAL_BASELINES`, all in eV.
+        adsorbate, energy_eV, model, sd_eV, low_50% to high_90%, `METAL_BASELINES` and plain
+        learners, all in eV.
     """
     rows = pure_rows() if rows is None else rows
     every = PureSurfaceModel().fit(rows, max_iter=0)
     judged = _close_packed(every, every.rows_)
-    parts = [_metal_fold(rows, judged, held) for held in _folds(judged["metal"], n_splits)]
-    found = pd.concat(parts).sort_index()
+    folds = _folds(judged["metal"], n_splits)
+    tasks = [delayed(_single_threaded)(_metal_fold, rows, judged, held) for held in folds]
+    found: pd.DataFrame = pd.concat(Parallel(n_jobs=n_jobs)(tasks)).sort_index()
     found = found.assign(material=found["metal"], group=found["metal"])
-    return found[[*_COLUMNS, *METAL_BASELINES]].reset_index(drop=True)
+    return found[[*_COLUMNS, *METAL_BASELINES, *PLAIN_LEARNERS]].reset_index(drop=True)
+
+
+def _single_threaded(work: Callable[..., pd.DataFrame], *given: Any) -> pd.DataFrame:
+    """Run one piece of work on one thread, so that its sums do not depend on the machine."""
+    with threadpool_limits(1):
+        return work(*given)
 
 
 def _metal_fold(rows: pd.DataFrame, judged: pd.DataFrame, held: set[str]) -> pd.DataFrame:
@@ -102,8 +129,9 @@ def _metal_fold(rows: pd.DataFrame, judged: pd.DataFrame, held: set[str]) -> pd.
             (judged["metal"] == metal) & judged["adsorbate"].isin(model.adsorbates_).to_numpy()
         ]
         found = model.predict(test["metal"].tolist(), test["adsorbate"].tolist())
-        baselines = _metal_baselines(judged[judged["metal"] != metal], test, metal)
-        parts.append(_with_interval(test, found.mean, found.sd, calibration).assign(**baselines))
+        baselines = metal_baselines(judged[judged["metal"] != metal], test, metal)
+        judged_here = _with_interval(test, found.mean, found.sd, calibration).assign(**baselines)
+        parts.append(judged_here.join(plain_learners(judged[judged["metal"] != metal], test)))
     return pd.concat(parts)
 
 
@@ -113,33 +141,8 @@ def _without(rows: pd.DataFrame, metal: str, tuned: PureSurfaceModel) -> PureSur
     return PureSurfaceModel().fit(kept, tuned.gaussian_.theta_, max_iter=0)
 
 
-def _metal_baselines(train: pd.DataFrame, test: pd.DataFrame, metal: str) -> dict[str, FloatArray]:
-    """Predict one metal by the mean, a line in the d-band centre and the nearest in the table."""
-    descriptors = metal_descriptors()
-    numbers = read_table("metals").set_index("element")[["group", "atomic_number"]].astype(float)
-    away = (numbers - numbers.loc[metal]).abs()
-    distance = away["group"] + away["atomic_number"] / 1000.0
-    out = np.empty((len(test), len(METAL_BASELINES)))
-    for position, adsorbate in enumerate(test["adsorbate"]):
-        known = train[train["adsorbate"] == adsorbate].set_index("metal")["energy_eV"]
-        line = np.column_stack([np.ones(len(descriptors)), descriptors["d_band_centre_eV"]])
-        line = np.column_stack([line, descriptors["sp_character"]])
-        design = pd.DataFrame(line, index=descriptors.index)
-        slopes, *_ = np.linalg.lstsq(design.loc[known.index].to_numpy(), known.to_numpy())
-        nearest = known[distance[known.index].idxmin()]
-        out[position] = known.mean(), design.loc[metal].to_numpy() @ slopes, nearest
-    return dict(zip(METAL_BASELINES, out.T, strict=True))
-
-
 def _members(rows: pd.DataFrame, names: set[str]) -> NDArray[np.bool_]:
     return np.asarray(rows["first"].isin(names) | rows["second"].isin(names))
-
-
-def _composition_averages(rows: pd.DataFrame) -> FloatArray:
-    descriptors = metal_descriptors()
-    share = rows["share"].to_numpy(dtype=np.float64)[:, None]
-    first, second = (descriptors.loc[rows[c]].to_numpy() for c in ("first", "second"))
-    return np.asarray(share * first + (1.0 - share) * second, dtype=np.float64)
 
 
 def _alloy_baselines(train: pd.DataFrame, test: pd.DataFrame, seed: int) -> pd.DataFrame:
@@ -148,11 +151,11 @@ def _alloy_baselines(train: pd.DataFrame, test: pd.DataFrame, seed: int) -> pd.D
     for adsorbate, part in test.groupby("adsorbate"):
         known = train[train["adsorbate"] == adsorbate]
         trees = ExtraTreesRegressor(120, random_state=seed)
-        trees.fit(_composition_averages(known), known["energy_eV"])
+        trees.fit(composition_averages(known), known["energy_eV"])
         values = [np.full(len(part), known["energy_eV"].mean())]
-        values.append(trees.predict(_composition_averages(part)))
+        values.append(trees.predict(composition_averages(part)))
         found.loc[part.index] = np.column_stack(values)
-    return test.join(found)
+    return test.join(found).join(plain_learners(train, test))
 
 
 def evaluate_compositions(
@@ -160,6 +163,8 @@ def evaluate_compositions(
     seed: int = 0,
     alloys: pd.DataFrame | None = None,
     pure: pd.DataFrame | None = None,
+    *,
+    n_jobs: int = 1,
 ) -> pd.DataFrame:
     """Predict every alloy row with its composition left out for all adsorbates.
 
@@ -170,6 +175,8 @@ def evaluate_compositions(
         Of the baseline trees.
     alloys, pure : pandas.DataFrame or None, default None
         As from `alloy_rows` and `pure_rows`; None for the packaged tables.
+    n_jobs : int, default 1
+        Workers; the result does not depend on it.
 
     Returns
     -------
@@ -179,27 +186,36 @@ def evaluate_compositions(
     """
     alloys = alloy_rows() if alloys is None else alloys
     surfaces = PureSurfaceModel().fit(pure_rows() if pure is None else pure)
-    parts = []
-    for fold, held in enumerate(_folds(alloys["composition"], n_splits)):
-        out = alloys["composition"].isin(held)
-        for members in FAMILIES.values():
-            own = alloys["adsorbate"].isin(members)
-            if (own & out).any():
-                found = _composition_fold(alloys[own & ~out], alloys[own & out], surfaces, members)
-                parts.append(_alloy_baselines(alloys[own & ~out], found.assign(fold=fold), seed))
-    found = pd.concat(parts).sort_index()
+    tasks = [
+        delayed(_single_threaded)(_compositions, alloys, surfaces, held, fold, members, seed)
+        for fold, held in enumerate(_folds(alloys["composition"], n_splits))
+        for members in FAMILIES.values()
+        if (alloys["composition"].isin(held) & alloys["adsorbate"].isin(members)).any()
+    ]
+    found: pd.DataFrame = pd.concat(Parallel(n_jobs=n_jobs)(tasks)).sort_index()
     found = found.assign(material=found["composition"], group=found["composition"])
     columns = [*_COLUMNS, "noise_sd_eV", "fold", "gaussian_weight", *ALLOY_BASELINES]
+    columns += [MIXING_RULE, *PLAIN_LEARNERS, *ALLOY_LADDER]
     return found[columns].reset_index(drop=True)
 
 
-def _composition_fold(
-    train: pd.DataFrame, test: pd.DataFrame, pure: PureSurfaceModel, members: tuple[str, ...]
+def _compositions(
+    alloys: pd.DataFrame,
+    pure: PureSurfaceModel,
+    held: set[str],
+    fold: int,
+    members: tuple[str, ...],
+    seed: int,
 ) -> pd.DataFrame:
+    """Judge one family of adsorbates on one fold of compositions."""
+    out, own = alloys["composition"].isin(held), alloys["adsorbate"].isin(members)
+    train, test = alloys[own & ~out], alloys[own & out]
     model = AlloySurfaceModel(members).fit(train, pure)
     mean, sd = model.predict(test)
-    found = _with_interval(test, mean, sd, model.calibration_)
-    return found.assign(gaussian_weight=model.weight_)
+    found = _with_interval(test, mean, sd, model.calibration_).assign(fold=fold)
+    found[MIXING_RULE] = mixing_rule(model.design_, test)
+    found["gaussian_weight"] = model.weight_
+    return _alloy_baselines(train, found.join(ladder_of_alloys(model, test)), seed)
 
 
 def evaluate_elements(
@@ -207,6 +223,8 @@ def evaluate_elements(
     seed: int = 0,
     alloys: pd.DataFrame | None = None,
     pure: pd.DataFrame | None = None,
+    *,
+    n_jobs: int = 1,
 ) -> pd.DataFrame:
     """Predict every alloy row once for either element, all data of that element left out.
 
@@ -221,6 +239,8 @@ def evaluate_elements(
         Of the baseline trees.
     alloys, pure : pandas.DataFrame or None, default None
         As from `alloy_rows` and `pure_rows`; None for the packaged tables.
+    n_jobs : int, default 1
+        Workers; the result does not depend on it.
 
     Returns
     -------
@@ -230,18 +250,20 @@ def evaluate_elements(
     """
     alloys = alloy_rows() if alloys is None else alloys
     pure = pure_rows() if pure is None else pure
-    parts = []
+    tasks = []
     for members in FAMILIES.values():
         rows = alloys[alloys["adsorbate"].isin(members)]
         elements = pd.concat([rows["first"], rows["second"]])
         if elements.nunique() >= _FEWEST_ELEMENTS:
-            parts += [
-                _element_fold(rows, pure, members, held, seed)
+            tasks += [
+                delayed(_single_threaded)(_element_fold, rows, pure, members, held, seed)
                 for held in _folds(elements, n_splits)
             ]
-    found = pd.concat(parts).sort_values(["group", "adsorbate", "composition"])
+    found: pd.DataFrame = pd.concat(Parallel(n_jobs=n_jobs)(tasks))
+    found = found.sort_values(["group", "adsorbate", "composition"])
     found = found.assign(material=found["composition"])
-    return found[[*_COLUMNS, "noise_sd_eV", *ALLOY_BASELINES]].reset_index(drop=True)
+    columns = [*_COLUMNS, "noise_sd_eV", *ALLOY_BASELINES, MIXING_RULE, *PLAIN_LEARNERS]
+    return found[columns].reset_index(drop=True)
 
 
 def _element_fold(
@@ -260,8 +282,11 @@ def _element_fold(
     parts = []
     for element in sorted(held):
         out = _members(rows, {element})
-        mean, sd = _new_element(rows[~out], rows[out], _without(pure, element, tuned), model)
+        known_pure = _without(pure, element, tuned)
+        mean, sd = _new_element(rows[~out], rows[out], known_pure, model)
         found = _with_interval(rows[out], mean, sd, model.element_calibration_)
+        design = SurfaceDesign(known_pure, _scale(rows[~out]), model.adsorbates)
+        found[MIXING_RULE] = mixing_rule(design, rows[out])
         parts.append(_alloy_baselines(rows[~out], found.assign(group=element), seed))
     return pd.concat(parts)
 
@@ -270,8 +295,7 @@ def _new_element(
     train: pd.DataFrame, test: pd.DataFrame, pure: PureSurfaceModel, tuned: AlloySurfaceModel
 ) -> tuple[FloatArray, FloatArray]:
     """Predict from the rows of other elements with the covariance parameters of `tuned`."""
-    grouped = train.groupby("adsorbate")["energy_eV"]
-    scale = pd.DataFrame({"mean": grouped.mean(), "sd": grouped.std(ddof=0)})
+    scale = _scale(train)
     design = SurfaceDesign(pure, scale, tuned.adsorbates)
     known = scale.loc[train["adsorbate"]].to_numpy()
     wanted = scale.loc[test["adsorbate"]].to_numpy()
@@ -284,13 +308,21 @@ def _new_element(
     return wanted[:, 0] + wanted[:, 1] * mean, wanted[:, 1] * np.hypot(sd, model.noise_)
 
 
-def evaluate_adsorption(seed: int = 0) -> dict[str, pd.DataFrame]:
+def _scale(rows: pd.DataFrame) -> pd.DataFrame:
+    """Return mean and deviation (eV) by adsorbate."""
+    grouped = rows.groupby("adsorbate")["energy_eV"]
+    return pd.DataFrame({"mean": grouped.mean(), "sd": grouped.std(ddof=0)})
+
+
+def evaluate_adsorption(seed: int = 0, n_jobs: int = 1) -> dict[str, pd.DataFrame]:
     """Return the three nested evaluations on the packaged tables.
 
     Parameters
     ----------
     seed : int, default 0
         Of the baseline trees.
+    n_jobs : int, default 1
+        Workers; the result does not depend on it.
 
     Returns
     -------
@@ -298,9 +330,9 @@ def evaluate_adsorption(seed: int = 0) -> dict[str, pd.DataFrame]:
         Keys ``metals``, ``compositions`` and ``elements``: what is left out.
     """
     return {
-        "metals": evaluate_metals(),
-        "compositions": evaluate_compositions(seed=seed),
-        "elements": evaluate_elements(seed=seed),
+        "metals": evaluate_metals(n_jobs=n_jobs),
+        "compositions": evaluate_compositions(seed=seed, n_jobs=n_jobs),
+        "elements": evaluate_elements(seed=seed, n_jobs=n_jobs),
     }
 
 

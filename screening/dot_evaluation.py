@@ -2,22 +2,33 @@
 
 For every material the whole procedure (parameters, blend weights, calibration) runs on the other
 materials. The material is then predicted twice: as *new*, and as *on record* with all of its rows
-but one size range, under the weights and calibration that the other materials taught. No figure
-comes from rows that anything learned from.
+but one size range, under the weights and calibration that the other materials taught. Random rows,
+sources and families are left out in the same way, with everything learned from the other rows. No
+figure comes from rows that anything learned from.
 """
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator, Sequence
 
 import numpy as np
 import pandas as pd
 from joblib import Parallel, delayed
-from scipy.stats import beta
+from sklearn.model_selection import GroupKFold
+from threadpoolctl import threadpool_limits
 
+from screening.audit_statistics import binomial_band
 from screening.calibration import LEVELS, group_weights
-from screening.dot_baselines import BASELINES
+from screening.covariance import FloatArray
+from screening.dot_baselines import ABLATIONS, BASELINES
 from screening.dots import NEW, ON_RECORD, SizeGapModel, range_groups
+from screening.reach import distance_to_data
 
-__all__ = ["evaluate_dots", "summarise"]
+__all__ = ["SPLITS", "evaluate_dots", "evaluate_splits", "split_labels", "summarise"]
+
+SPLITS = ("random rows", "sources", "size ranges", "materials", "families")
+"""What is left out, from the easiest to the hardest."""
+
+_N_FOLDS = 5
+_WHOLE_MATERIALS = ("materials", "families")
 
 _KEEP = [
     "record",
@@ -46,51 +57,152 @@ def evaluate_dots(rows: pd.DataFrame, n_jobs: int = 1, seed: int = 0) -> pd.Data
     -------
     pandas.DataFrame
         One row a record and state: record, material, family, diameter_nm, confidence, vote,
-        noise_eV, optical_gap_eV, state, predicted_gap_eV, low_50 ... high_90 and, for *new*, a
-        column for each baseline.
+        noise_eV, optical_gap_eV, state, predicted_gap_eV, low_50 ... high_90, kernel_distance,
+        family_on_record, reach and a column for each baseline.
     """
-    materials = sorted(rows["material"].unique())
-    parts = Parallel(n_jobs=n_jobs)(
-        delayed(_leave_material)(rows, material, seed) for material in materials
-    )
-    frames: list[pd.DataFrame] = [frame for part in parts for frame in part]
-    return pd.concat(frames, ignore_index=True)
+    found = evaluate_splits(rows, ("size ranges", "materials"), n_jobs=n_jobs, seed=seed)
+    return found.drop(columns="split")
 
 
-def _leave_material(rows: pd.DataFrame, material: str, seed: int) -> list[pd.DataFrame]:
+def split_labels(rows: pd.DataFrame, split: str, seed: int = 0) -> pd.Series:
+    """Return what each row is left out with; empty where a row is not judged.
+
+    Parameters
+    ----------
+    rows : pandas.DataFrame
+        As from ``features.size_gap.training_rows``.
+    split : str
+        One of `SPLITS`. Random rows come in five equal folds, sources in five folds of whole
+        sources; size ranges, materials and families one at a time.
+    seed : int, default 0
+        Of the order of random rows.
+
+    Returns
+    -------
+    pandas.Series
+        With the index of the rows.
+    """
+    if split == "size ranges":
+        return range_groups(rows)
+    if split in {"materials", "families"}:
+        return rows["material" if split == "materials" else "family"]
+    if split == "random rows":
+        order = np.random.default_rng(seed).permutation(len(rows))
+        return pd.Series(order % _N_FOLDS, index=rows.index).astype(str)
+    names = np.sort(rows["source"].unique())
+    folds = np.empty(len(rows), dtype=int)
+    splitter = GroupKFold(min(_N_FOLDS, len(names)))
+    for fold, (_, test) in enumerate(splitter.split(rows, groups=rows["source"])):
+        folds[test] = fold
+    return pd.Series(folds, index=rows.index).astype(str)
+
+
+def evaluate_splits(
+    rows: pd.DataFrame,
+    splits: Sequence[str] = SPLITS,
+    judged: pd.Series | None = None,
+    *,
+    n_jobs: int = 1,
+    seed: int = 0,
+) -> pd.DataFrame:
+    """Predict every row under several splits, everything that learns being inside each.
+
+    Parameters
+    ----------
+    rows : pandas.DataFrame
+        As from ``features.size_gap.training_rows``.
+    splits : sequence of str, default `SPLITS`
+    judged : pandas.Series of bool or None, default None
+        Rows whose predictions are wanted; None for all. All rows train.
+    n_jobs : int, default 1
+        Workers; the result does not depend on it.
+    seed : int, default 0
+
+    Returns
+    -------
+    pandas.DataFrame
+        As `evaluate_dots`, with the split, kernel_distance, family_on_record and reach of each
+        row, a column for each baseline and, where whole materials are left out, for each step of
+        the ladder.
+    """
+    wanted = pd.Series(data=True, index=rows.index) if judged is None else judged
+    tasks = list(_tasks(rows, splits, wanted, seed))
+    parts = Parallel(n_jobs=n_jobs)(delayed(_single_threaded)(task, rows) for task in tasks)
+    found: pd.DataFrame = pd.concat([frame for part in parts for frame in part])
+    found = found[wanted.loc[found.index].to_numpy()]
+    order = found["split"].map(SPLITS.index).argsort(kind="stable")
+    return found.iloc[order].reset_index(drop=True)
+
+
+def _tasks(
+    rows: pd.DataFrame, splits: Sequence[str], wanted: pd.Series, seed: int
+) -> Iterator[tuple[str, pd.Series, int]]:
+    """Yield split, rows left out and seed of each piece of work, the longest first."""
+    together = {"size ranges", "materials"}
+    if together & set(splits):
+        for material in sorted(rows.loc[wanted, "material"].unique()):
+            yield "materials", rows["material"].eq(material), seed
+    for split in [s for s in splits if s not in together]:
+        labels = split_labels(rows, split, seed)
+        for label in sorted(set(labels[wanted]) - {""}):
+            yield split, labels.eq(label), seed
+
+
+def _single_threaded(task: tuple[str, pd.Series, int], rows: pd.DataFrame) -> list[pd.DataFrame]:
+    """Run one piece of work on one thread, so that its sums do not depend on the machine."""
+    split, out, seed = task
+    with threadpool_limits(1):
+        if split == "materials":
+            return _leave_material(rows, out, seed)
+        return [_leave(rows, out, split, seed)]
+
+
+def _leave(rows: pd.DataFrame, out: pd.Series, split: str, seed: int) -> pd.DataFrame:
+    """Predict rows by a model that learned everything from the others."""
+    model = SizeGapModel(seed).fit(rows[~out]).calibrate()
+    return _predicted(model, rows[~out], rows[out], split)
+
+
+def _leave_material(rows: pd.DataFrame, own: pd.Series, seed: int) -> list[pd.DataFrame]:
     """Evaluate one material in both states with everything learned from the others."""
-    own = rows["material"].eq(material)
     others = SizeGapModel(seed).fit(rows[~own]).calibrate()
-    frames = [_as_new(others, rows[~own], rows[own])]
+    frames = [_predicted(others, rows[~own], rows[own], "materials")]
     ranges = range_groups(rows)
     for label in sorted(set(ranges[own]) - {""}):
         test = ranges.eq(label)
         model = SizeGapModel(seed).fit(rows[~test])
         model.states_ = others.states_
-        frames.append(_predicted(model, rows[test], ON_RECORD))
+        frames.append(_predicted(model, rows[~test], rows[test], "size ranges"))
     return frames
 
 
-def _as_new(model: SizeGapModel, train: pd.DataFrame, test: pd.DataFrame) -> pd.DataFrame:
-    frame = _predicted(model, test, NEW)
-    for name, baseline in BASELINES.items():
-        frame[name] = baseline(train, test)
-    return frame
-
-
-def _predicted(model: SizeGapModel, test: pd.DataFrame, state: str) -> pd.DataFrame:
+def _predicted(
+    model: SizeGapModel, train: pd.DataFrame, test: pd.DataFrame, split: str
+) -> pd.DataFrame:
     """Predict rows as the next measured values, their own noise included."""
     predicted = model.predict(test)
     predicted["model_sd_eV"] = np.hypot(predicted["model_sd_eV"], test["noise_eV"])
     frame = test[_KEEP].copy()
-    frame["state"] = state
+    frame["split"], frame["state"] = split, predicted["record_state"]
     frame["predicted_gap_eV"] = predicted["optical_gap_eV"]
     for level in LEVELS:
         name = f"{level:.0%}".rstrip("%")
-        exists = level in model.states_[state].calibration.factors_
-        ends = model.interval(predicted, level) if exists else (np.nan, np.nan)
-        frame[f"low_{name}"], frame[f"high_{name}"] = ends
-    return frame
+        frame[f"low_{name}"], frame[f"high_{name}"] = _ends(model, predicted, level)
+    for name, method in (BASELINES | (ABLATIONS if split in _WHOLE_MATERIALS else {})).items():
+        frame[name] = method(train, test)
+    return frame.join(distance_to_data(model, test))
+
+
+def _ends(
+    model: SizeGapModel, predicted: pd.DataFrame, level: float
+) -> tuple[FloatArray, FloatArray]:
+    """Return the ends of an interval; missing where a state has too few groups for the level."""
+    ends = np.full((2, len(predicted)), np.nan)
+    for state in predicted["record_state"].unique():
+        if level in model.states_[state].calibration.factors_:
+            rows = predicted["record_state"].eq(state).to_numpy()
+            ends[:, rows] = model.interval(predicted[rows], level)
+    return ends[0], ends[1]
 
 
 def _by_group(errors: pd.Series, frame: pd.DataFrame) -> pd.Series:
@@ -104,14 +216,6 @@ def _bootstrap(values: pd.Series, seed: int = 0) -> tuple[float, float]:
     rng = np.random.default_rng(seed)
     draws = rng.choice(values.to_numpy(), size=(2000, len(values)))
     low, high = np.quantile(draws.mean(axis=1), [0.05, 0.95])
-    return float(low), float(high)
-
-
-def _binomial(share: float, n_groups: int) -> tuple[float, float]:
-    """Return the exact 90 % binomial interval of a share, counted in groups."""
-    hits = share * n_groups
-    low = beta.ppf(0.05, hits, n_groups - hits + 1) if hits > 0 else 0.0
-    high = beta.ppf(0.95, hits + 1, n_groups - hits) if hits < n_groups else 1.0
     return float(low), float(high)
 
 
@@ -164,7 +268,7 @@ def _state_figures(frame: pd.DataFrame, state: str) -> Iterable[dict[str, object
         inside = observed.between(frame[f"low_{name}"], frame[f"high_{name}"]).astype(float)
         groups = _by_group(inside, frame)
         row = _row(
-            f"coverage_{name}", state, groups, _binomial(groups.mean(), len(groups)), len(frame)
+            f"coverage_{name}", state, groups, binomial_band(groups.mean(), len(groups)), len(frame)
         )
         yield row | {"worst": float(groups.min()), "worst_group": str(groups.idxmin())}
         width = _by_group(frame[f"high_{name}"] - frame[f"low_{name}"], frame)

@@ -50,6 +50,7 @@ _TERMS = (
 _COMPUTED = CovarianceTerm("computed", labels=(9,), amplitude=0.2)
 _N_SMOOTH = len(_CENTRES)
 _N_GAUSSIAN = 10
+_SOURCE = _N_SMOOTH + 2
 _FEWEST_ROWS = 3
 
 
@@ -279,6 +280,20 @@ class SizeGapModel:
             },
             index=candidates.index,
         )
+
+    def design(self, candidates: pd.DataFrame) -> FloatArray:
+        """Return the regressors' columns of candidates, as of samples from no known source."""
+        return self._columns(candidates, training=False)[0]
+
+    def scatter_sd_eV(self, candidates: pd.DataFrame) -> FloatArray:
+        """Return the scatter between sources and samples of one pair, which no model narrows."""
+        scatter = np.empty(len(candidates))
+        for name, rows in self._rows_by_state(candidates):
+            gaussian = self.regressor(name).gaussian_
+            fitted = gaussian.term_parameters()
+            between = sum(fitted[t.name].amplitude ** 2 for t in _TERMS if _SOURCE in t.labels)
+            scatter[rows] = np.sqrt(between + gaussian.noise_**2)
+        return scatter * self.scale_of(candidates)
 
     def joint_covariance(self, candidates: pd.DataFrame) -> FloatArray:
         """Return how the errors of candidates vary together, uncalibrated, in eV squared.

@@ -201,6 +201,22 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
         check_is_fitted(self)
         return self.X_, self._alpha, self._cholesky[0]
 
+    def correlation(self, X: Any) -> FloatArray:
+        """Return the prior correlation of new rows with every training row.
+
+        Parameters
+        ----------
+        X : array-like of shape (n_rows, n_columns)
+
+        Returns
+        -------
+        ndarray of shape (n_rows, n_training_rows)
+        """
+        check_is_fitted(self)
+        X = validate_data(self, X, dtype=np.float64, reset=False)
+        spread = np.outer(self._prior_variance(X), self._prior_variance(self.X_))
+        return np.asarray(self._cross(X) / np.sqrt(spread))
+
     @property
     def noise_(self) -> float:
         """Fitted residual noise (standard deviation, unit of y)."""

@@ -9,6 +9,7 @@ from pathlib import Path
 import pytest
 
 from screening.evidence_table import evidence_markdown
+from screening.how_sure import how_sure_markdown
 from screening.running import held_out_figures
 
 TOP = Path(__file__).parents[1]
@@ -45,3 +46,14 @@ def test_console_blocks_of_the_readme_run(tmp_path):
             check=False,
         )
         assert done.returncode == 0, (line, done.stderr)
+
+
+def test_the_page_on_how_sure_prints_the_figures_of_the_audit():
+    page = (TOP / "docs" / "how-sure.md").read_text(encoding="utf-8")
+    assert page == how_sure_markdown()
+
+
+def test_the_readme_prints_no_measured_figure_outside_the_audits_table():
+    section = README.split("## How sure\n", 1)[1].split("\n## ", 1)[0]
+    prose = re.sub(r"<!-- evidence -->.*?<!-- /evidence -->", "", section, flags=re.DOTALL)
+    assert not re.findall(r"\d+\.\d+|\d+ %|\d+ (?:m?eV|nm)", prose)

@@ -14,7 +14,8 @@ from screening.adsorption_audit import (
     evaluate_metals,
     summarise_adsorption,
 )
-from screening.adsorption_design import alloy_rows
+from screening.adsorption_baselines import mixing_rule, plain_learners
+from screening.adsorption_design import SurfaceDesign, alloy_rows
 from screening.adsorption_pure import PureSurfaceModel, pure_rows
 
 
@@ -142,3 +143,47 @@ def test_offset_of_every_other_source_is_shown():
     shown = set(model.source_offsets()["source"])
     others = model.rows_[~model.rows_["reference"] & (model.rows_["openness"] == 0.0)]
     assert shown == set(others["source"])
+
+
+def test_one_worker_and_two_give_the_same_numbers(metals):
+    rows = pure_rows()
+    again = evaluate_metals(2, rows[rows["adsorbate"].isin(["O", "OH"])], n_jobs=2)
+    pd.testing.assert_frame_equal(again, metals)
+
+
+def test_a_model_trained_on_shuffled_energies_shows_no_skill():
+    # A leak would let it foresee the shuffled energies; the mean foresees nothing.
+    rows = pure_rows()
+    rows = rows[rows["adsorbate"].isin(["O", "OH"])].copy()
+    rng = np.random.default_rng(0)
+    rows["energy_eV"] = rows.groupby("adsorbate")["energy_eV"].transform(rng.permutation)
+    found = evaluate_metals(2, rows)
+    error = (found["model"] - found["energy_eV"]).abs().mean()
+    assert error > 0.9 * (found["mean"] - found["energy_eV"]).abs().mean()
+
+
+def test_intervals_of_every_level_are_nested(metals):
+    for low, high in (("50%", "80%"), ("80%", "90%")):
+        assert (metals[f"low_{high}"] <= metals[f"low_{low}"]).all()
+        assert (metals[f"high_{high}"] >= metals[f"high_{low}"]).all()
+
+
+def test_plain_learners_see_the_training_rows_only():
+    rows = pure_rows()
+    rows = rows[rows["adsorbate"].eq("O") & rows["source"].eq("mamun2019")]
+    train, test = rows.iloc[5:], rows.iloc[:5].assign(energy_eV=np.nan)
+    found = plain_learners(train, test)
+    assert np.isfinite(found.to_numpy()).all()
+    itself = plain_learners(train, train)["nearest record"]
+    np.testing.assert_allclose(itself, train["energy_eV"])
+
+
+def test_the_mixing_rule_of_a_pure_metal_is_its_own_surface(pure):
+    model = PureSurfaceModel().fit(pure, max_iter=0)
+    scale = pd.DataFrame({"mean": [-1.0], "sd": [0.5]}, index=["CH3"])
+    design = SurfaceDesign(model, scale, ("CH3",))
+    rows = pd.DataFrame(
+        {"first": ["Pt"], "second": ["Pt"], "share": [0.5], "hollow": [False], "adsorbate": ["CH3"]}
+    )
+    expected = model.predict(["Pt"], ["CH3"]).mean
+    np.testing.assert_allclose(mixing_rule(design, rows), expected)

@@ -2,7 +2,9 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from mapie.regression import SplitConformalRegressor
 from scipy.stats import binom
+from sklearn.dummy import DummyRegressor
 
 from features.errors import CalibrationError
 from screening.calibration import LEVELS, GroupCalibration, group_weights
@@ -96,3 +98,17 @@ def test_what_was_learned_can_be_rebuilt():
     rebuilt = GroupCalibration.from_factors(fitted.factors_, fitted.n_groups_)
     z = np.linspace(-3, 3, 7)
     np.testing.assert_array_equal(rebuilt.normal_score(z), fitted.normal_score(z))
+
+
+@pytest.mark.parametrize("n_rows", [19, 60, 333])
+def test_on_exchangeable_rows_the_intervals_are_those_of_mapie(n_rows):
+    # One row a group is split conformal prediction with absolute residuals.
+    residual = np.random.default_rng(n_rows).standard_t(3, size=n_rows)
+    nothing = DummyRegressor(strategy="constant", constant=0.0).fit([[0.0]], [0.0])
+    columns = np.zeros((n_rows, 1))
+    other = SplitConformalRegressor(nothing, confidence_level=list(LEVELS), prefit=True)
+    _, intervals = other.conformalize(columns, residual).predict_interval(columns[:1])
+    own = GroupCalibration().fit(residual, np.ones(n_rows), np.arange(n_rows))
+    for at, level in enumerate(LEVELS):
+        ends = [end[0] for end in own.interval(np.zeros(1), np.ones(1), level)]
+        np.testing.assert_allclose(intervals[0, :, at], ends, rtol=1e-12)
