@@ -64,8 +64,8 @@ class Sublattice:
             parse_formula(symbol)
 
     @cached_property
-    def shares(self) -> tuple[tuple[tuple[str, float], ...], ...]:
-        """Every mixture of the elements: pairs of symbol and share, in a settled order.
+    def mixtures(self) -> dict[tuple[str, ...], tuple[tuple[float, ...], ...]]:
+        """Shares of every choice of elements, in a settled order.
 
         Raises
         ------
@@ -73,15 +73,23 @@ class Sublattice:
             If a sublattice alone has more mixtures than can be listed.
         """
         self._check_number()
-        found: list[tuple[tuple[str, float], ...]] = []
+        steps = round(100.0 / self.step_percent)
+        found = {}
         for n_mixed in self._mixed():
             for chosen in combinations(self.elements, n_mixed):
-                found += [
-                    tuple(zip(chosen, split, strict=True))
-                    for split in _splits(round(100.0 / self.step_percent), n_mixed)
+                shares = tuple(
+                    split
+                    for split in _splits(steps, n_mixed)
                     if self._in_ranges(dict(zip(chosen, split, strict=True)))
-                ]
-        return tuple(found)
+                )
+                if shares:
+                    found[chosen] = shares
+        return found
+
+    @property
+    def n_mixtures(self) -> int:
+        """Number of mixtures of the sublattice."""
+        return sum(len(shares) for shares in self.mixtures.values())
 
     def _mixed(self) -> range:
         return range(1, min(self.most_mixed, len(self.elements)) + 1)
@@ -151,26 +159,66 @@ class CompositionSpace:
     @property
     def n_mixtures(self) -> int:
         """Number of mixtures to try: an upper bound of the number of compositions."""
-        return math.prod(len(part.shares) for part in self.sublattices)
+        return math.prod(part.n_mixtures for part in self.sublattices)
 
     def __iter__(self) -> Iterator[Compound]:
         """Yield the charge-balanced compositions, each once, in a settled order."""
-        for mixture in product(*(part.shares for part in self.sublattices)):
-            compound = self._compound(mixture)
+        for elements in self.choices():
+            yield from self.compounds(elements)
+
+    def choices(self) -> Iterator[tuple[tuple[str, ...], ...]]:
+        """Yield every choice of the elements on the sublattices.
+
+        Yields
+        ------
+        tuple of tuple of str
+            Elements of each sublattice.
+        """
+        yield from product(*(part.mixtures for part in self.sublattices))
+
+    def n_of(self, elements: tuple[tuple[str, ...], ...]) -> int:
+        """Return the number of mixtures of a choice of elements."""
+        parts = zip(self.sublattices, elements, strict=True)
+        return math.prod(len(part.mixtures[chosen]) for part, chosen in parts)
+
+    def compounds(self, elements: tuple[tuple[str, ...], ...]) -> Iterator[Compound]:
+        """Yield the charge-balanced compositions of a choice of elements.
+
+        Parameters
+        ----------
+        elements : tuple of tuple of str
+            As from `choices`.
+
+        Yields
+        ------
+        Compound
+        """
+        parts = zip(self.sublattices, elements, strict=True)
+        charges = [
+            [_charge(symbol, at, len(elements)) for symbol in chosen]
+            for at, chosen in enumerate(elements)
+        ]
+        for shares in product(*(part.mixtures[chosen] for part, chosen in parts)):
+            compound = self._compound(elements, shares, charges)
             if compound is not None:
                 yield compound
 
-    def _compound(self, mixture: Sequence[tuple[tuple[str, float], ...]]) -> Compound | None:
+    def _compound(
+        self,
+        elements: tuple[tuple[str, ...], ...],
+        shares: tuple[tuple[float, ...], ...],
+        unit_charges: list[list[int]],
+    ) -> Compound | None:
         charges = [
-            sum(share * _charge(symbol, at, len(mixture)) for symbol, share in part)
-            for at, part in enumerate(mixture)
+            sum(share * charge for share, charge in zip(part, units, strict=True))
+            for part, units in zip(shares, unit_charges, strict=True)
         ]
         atoms = _balanced_atoms([part.atoms for part in self.sublattices], charges)
         if atoms is None:
             return None
         amounts: dict[str, float] = {}
-        for part, number in zip(mixture, atoms, strict=True):
-            for symbol, share in part:
+        for chosen, part, number in zip(elements, shares, atoms, strict=True):
+            for symbol, share in zip(chosen, part, strict=True):
                 amounts[symbol] = amounts.get(symbol, 0.0) + share * number
         try:
             compound = compound_from_amounts(amounts)

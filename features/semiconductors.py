@@ -12,7 +12,7 @@ import numpy as np
 import pandas as pd
 
 from features.errors import UnknownMaterialError, explain
-from features.formula import parse_formula
+from features.formula import Compound, parse_formula
 from features.tables import read_table
 
 __all__ = [
@@ -22,6 +22,7 @@ __all__ = [
     "has_indirect_gap",
     "known_materials",
     "match_material",
+    "recorded_name",
 ]
 
 CONSTANTS = ("gap_eV", "electron_mass_m0", "hole_mass_m0", "dielectric")
@@ -64,7 +65,18 @@ def find_material(text: str) -> str | None:
     >>> find_material("SeCd"), find_material("NaCl")
     ('CdSe', None)
     """
-    return _by_canonical().get(parse_formula(text).formula)
+    return recorded_name(parse_formula(text))
+
+
+def recorded_name(compound: Compound) -> str | None:
+    """Return the table's name of a compound, or None where no bulk constants are on record.
+
+    Examples
+    --------
+    >>> recorded_name(parse_formula("SeCd"))
+    'CdSe'
+    """
+    return _by_canonical().get(compound.formula)
 
 
 @cache

@@ -17,7 +17,7 @@ from features.errors import UnknownMaterialError, explain
 from features.formula import Compound, compound_from_amounts, parse_formula
 from features.semiconductors import known_materials
 
-__all__ = ["SolidSolution", "is_solid_solution", "solid_solution", "sublattice_key"]
+__all__ = ["SolidSolution", "element_column", "is_solid_solution", "solid_solution"]
 
 _MAX_MEMBERS = 64
 
@@ -183,27 +183,12 @@ def is_solid_solution(compound: Compound) -> bool:
         return False
 
 
-def sublattice_key(compound: Compound) -> tuple[tuple[tuple[str, ...], float], ...]:
-    """Return what decides on the end members: who shares each sublattice, and its total.
-
-    Compositions that differ in the shares alone have the same key, and are solid solutions
-    together or not at all.
-
-    Parameters
-    ----------
-    compound : Compound
-
-    Returns
-    -------
-    tuple of (tuple of str, float)
+def element_column(symbol: str) -> float:
+    """Return the column of the periodic table of an element, 0 for an organic cation.
 
     Examples
     --------
-    >>> first, second = (sublattice_key(parse_formula(f)) for f in ("CdSe0.6S0.4", "CdSe0.1S0.9"))
-    >>> first == second
-    True
+    >>> element_column("Zn"), element_column("Se")
+    (12.0, 16.0)
     """
-    return tuple(
-        (tuple(sorted(group)), round(fsum(group.values()), 6))
-        for group in _grouped(compound, _columns())
-    )
+    return _columns().get(symbol, 0.0)

@@ -56,7 +56,11 @@ class Space(StrictPart):
         listed = bool(self.cations) and bool(self.anions)
         if listed == bool(self.sites) or (self.sites and (self.cations or self.anions)):
             raise ValueError("expected cations and anions, or sites, exactly one of the two")
+        known = {symbol for site in self.sites for symbol in site.elements}
+        known |= {*self.cations, *self.anions}
         for symbol, (low, high) in self.ranges.items():
+            if symbol not in known:
+                raise ValueError(f"range of {symbol}: it stands on no sublattice")
             if not 0.0 <= low <= high <= 1.0:
                 raise ValueError(
                     f"range of {symbol}: expected 0 <= low <= high <= 1, found [{low}, {high}]"

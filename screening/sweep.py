@@ -14,14 +14,15 @@ from dataclasses import dataclass, field
 from itertools import islice
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
+from zipfile import BadZipFile
 
 import numpy as np
 import pandas as pd
 from joblib import Parallel, delayed, effective_n_jobs
 
 from features.formula import Compound, parse_formula
-from features.semiconductors import find_material
-from features.solid_solutions import is_solid_solution, sublattice_key
+from features.semiconductors import recorded_name
+from features.solid_solutions import element_column, is_solid_solution
 from screening.candidates import pair_frame, size_grid
 from screening.fingerprint import text_hash
 from screening.limits import judge
@@ -38,6 +39,7 @@ __all__ = ["Sweep", "SweepCounts", "count_mixtures", "enumerate_compositions"]
 _BLOCK = 256
 _CHUNK = 400
 _TIE = 1e-8
+_UNKNOWN = "no solid solution of materials on record"
 
 
 @dataclass
@@ -97,36 +99,64 @@ def enumerate_compositions(
     str
         Formula, named as in the tables where it is on record.
     """
-    counts = {} if refused is None else refused
+    counts: dict[str, int] = {} if refused is None else refused
     seen: set[str] = set()
     excluded = set(wanted.exclude_elements)
     left_out = {parse_formula(text).formula for text in wanted.exclude_materials}
-    known: dict[object, bool] = {}
-    for space in wanted.spaces:
-        for compound in space.space():
-            formula = compound.formula
-            reason = ""
-            if formula in seen:
+    for rule in wanted.spaces:
+        space = rule.space()
+        for elements in space.choices():
+            if excluded & {symbol for chosen in elements for symbol in chosen}:
+                _count(counts, "contains excluded elements", space.n_of(elements))
                 continue
-            seen.add(formula)
-            if excluded & {symbol for symbol, _ in compound.parts}:
-                reason = "contains excluded elements"
-            elif formula in left_out:
-                reason = "excluded by name"
-            elif space.on_record and not (find_material(formula) or _is_known(compound, known)):
-                reason = "no solid solution of materials on record"
-            if reason:
-                counts[reason] = counts.get(reason, 0) + 1
-            else:
-                yield find_material(formula) or formula
+            if rule.on_record and _is_isovalent(elements):
+                first = next(space.compounds(elements), None)
+                if first is None or not _is_known(first, {}):
+                    _count(counts, _UNKNOWN, space.n_of(elements))
+                    continue
+            known: dict[object, bool] = {}
+            for compound in space.compounds(elements):
+                name = recorded_name(compound) or compound.formula
+                if name in seen:
+                    continue
+                if rule.on_record and not _is_known(compound, known):
+                    _count(counts, _UNKNOWN)
+                    continue
+                seen.add(name)
+                if compound.formula in left_out:
+                    _count(counts, "excluded by name")
+                else:
+                    yield name
+
+
+def _is_isovalent(elements: tuple[tuple[str, ...], ...]) -> bool:
+    """Return whether the elements of every sublattice stand in one column."""
+    return all(len({element_column(symbol) for symbol in chosen}) == 1 for chosen in elements)
+
+
+def _count(counts: dict[str, int], reason: str, number: int = 1) -> None:
+    counts[reason] = counts.get(reason, 0) + number
 
 
 def _is_known(compound: Compound, known: dict[object, bool]) -> bool:
-    """Return whether all end members are on record, asked once a choice of elements."""
-    key = sublattice_key(compound)
+    """Return whether all end members are on record; of one choice of elements asked once a total.
+
+    What is shared by compositions of one choice of elements are the end members; only the totals
+    of the sublattices may differ, and with them the members.
+    """
+    key = _totals(compound)
     if key not in known:
-        known[key] = is_solid_solution(compound)
+        known[key] = recorded_name(compound) is not None or is_solid_solution(compound)
     return known[key]
+
+
+def _totals(compound: Compound) -> tuple[float, ...]:
+    """Return the total of each column of the periodic table, which tells the end members apart."""
+    totals: dict[float, float] = {}
+    for symbol, amount in compound.parts:
+        column = element_column(symbol)
+        totals[column] = totals.get(column, 0.0) + amount
+    return tuple(round(totals[column], 6) for column in sorted(totals))
 
 
 class Sweep:
@@ -163,9 +193,7 @@ class Sweep:
             target.quantity == "emission",
         )
         self.counts = SweepCounts()
-        self._pool = pd.DataFrame(
-            {"material": pd.Series(dtype=object), "diameter_nm": [], "chance": [], "open": []}
-        )
+        self._pool = _pool([], [], [])
         self._scored: list[pd.DataFrame] = []
         self._listed = pd.DataFrame()
 
@@ -222,14 +250,7 @@ class Sweep:
         return self.kept / f"{number:07d}-{content}.npz"
 
     def _take(self, found: Found) -> None:
-        rows = pd.DataFrame(
-            {
-                "material": found.material,
-                "diameter_nm": found.diameter_nm,
-                "chance": found.chance,
-                "open": True,
-            }
-        )
+        rows = _pool(found.material, found.diameter_nm, found.chance)
         self._pool = pd.concat([self._pool, rows], ignore_index=True)
 
     def _cut(self, least: float) -> float:
@@ -239,7 +260,7 @@ class Sweep:
         self._pool = self._pool.sort_values(order, ascending=[False, True, True], kind="stable")
         last = least
         while True:
-            todo = self._pool[self._pool["open"].astype(bool) & (self._pool["chance"] >= last)]
+            todo = self._pool[self._pool["open"] & (self._pool["chance"] >= last)]
             if todo.empty:
                 break
             chunk = todo.head(_CHUNK)
@@ -265,6 +286,18 @@ class Sweep:
         return shortlist_of(scored, self.specification, self.track)
 
 
+def _pool(material: Any, diameter_nm: Any, chance: Any) -> pd.DataFrame:
+    """Return pairs that wait to be scored."""
+    return pd.DataFrame(
+        {
+            "material": pd.Series(material, dtype=object),
+            "diameter_nm": pd.Series(diameter_nm, dtype=np.float64),
+            "chance": pd.Series(chance, dtype=np.float64),
+            "open": np.ones(len(chance), dtype=bool),
+        }
+    )
+
+
 def _batches(names: Iterator[str]) -> Iterator[list[str]]:
     while block := list(islice(names, _BLOCK)):
         yield block
@@ -275,7 +308,7 @@ def _read(path: Path | None) -> Found | None:
     if path is None or not path.is_file():
         return None
     try:
-        with np.load(path, allow_pickle=False) as data:
+        with path.open("rb") as stream, np.load(stream, allow_pickle=False) as data:
             n_pairs, n_trees, n_solved = (int(value) for value in data["numbers"])
             return Found(
                 material=data["material"].astype(object),
@@ -286,7 +319,7 @@ def _read(path: Path | None) -> Found | None:
                 n_solved=n_solved,
                 best=data["best"],
             )
-    except (OSError, ValueError, KeyError):
+    except (OSError, ValueError, KeyError, BadZipFile):
         return None
 
 

@@ -41,6 +41,8 @@ _MARGIN_EV = 1e-4
 _MARGIN_SD = 1e-3
 """Relative margin of the interpolated standard deviations; likewise."""
 _MARGIN_FEATURE = 1e-4
+_ALIKE = 32
+"""Compositions over which the trees are bounded together."""
 
 
 @dataclass(frozen=True)
@@ -248,13 +250,24 @@ def _bound(
 def _tree_range(
     grid: GridGap, block: GridBlock, physics: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
-    """Return bounds of the trees at every size over the compositions of a block."""
+    """Return bounds of the trees at every size, over groups of similar compositions."""
     if grid.weight >= 1.0:
         return np.zeros(len(grid.diameter_nm)), np.zeros(len(grid.diameter_nm))
-    features = _features(block.frame, grid.diameter_nm, physics)
-    low = np.stack([part.min(axis=0) for part in features], axis=1) - _MARGIN_FEATURE
-    high = np.stack([part.max(axis=0) for part in features], axis=1) + _MARGIN_FEATURE
-    return tree_bounds(grid.regressor.trees_, low, high)
+    order = np.lexsort((block.frame["electron_mass_m0"], block.frame["gap_eV"]))
+    starts = np.arange(0, len(order), _ALIKE)
+    features = [part[order] for part in _features(block.frame, grid.diameter_nm, physics)]
+    low = np.stack([np.minimum.reduceat(part, starts) for part in features], axis=-1)
+    high = np.stack([np.maximum.reduceat(part, starts) for part in features], axis=-1)
+    shape = low.shape[:2]
+    ends = tree_bounds(
+        grid.regressor.trees_,
+        low.reshape(-1, low.shape[-1]) - _MARGIN_FEATURE,
+        high.reshape(-1, high.shape[-1]) + _MARGIN_FEATURE,
+    )
+    group = np.empty(len(order), dtype=np.int64)
+    group[order] = np.arange(len(order)) // _ALIKE
+    lowest, highest = (end.reshape(shape)[group] for end in ends)
+    return lowest, highest
 
 
 def _features(

@@ -29,14 +29,19 @@ def test_the_number_of_mixtures_is_that_of_combinatorics(n_elements, step, mixed
         math.comb(n_elements, k) * math.comb(steps - 1, k - 1)
         for k in range(1, min(mixed, n_elements) + 1)
     )
-    assert len(Sublattice(elements, 1, step, mixed).shares) == expected
+    assert Sublattice(elements, 1, step, mixed).n_mixtures == expected
 
 
 @given(st.sampled_from([5.0, 10.0, 25.0]), st.integers(1, 3))
 def test_shares_sum_to_one_and_no_mixture_comes_twice(step, mixed):
-    shares = Sublattice(("S", "Se", "Te"), None, step, mixed).shares
-    assert all(sum(share for _, share in mixture) == pytest.approx(1.0) for mixture in shares)
-    assert len({tuple(sorted(mixture)) for mixture in shares}) == len(shares)
+    sublattice = Sublattice(("S", "Se", "Te"), None, step, mixed)
+    found = [
+        tuple(zip(chosen, split, strict=True))
+        for chosen, shares in sublattice.mixtures.items()
+        for split in shares
+    ]
+    assert all(sum(share for _, share in mixture) == pytest.approx(1.0) for mixture in found)
+    assert len(set(found)) == len(found) == sublattice.n_mixtures
 
 
 def test_every_composition_is_charge_balanced_and_comes_once():
@@ -78,6 +83,13 @@ def test_ranges_bound_the_share_of_an_element():
     assert sorted(round(share, 6) for share in shares) == [0.1, 0.15, 0.2, 0.25, 0.3]
 
 
+def test_choices_of_elements_together_hold_all_mixtures():
+    space = CompositionSpace(
+        (Sublattice(("Zn", "Cd", "Mg"), 1, 20), Sublattice(("S", "Se"), None, 20))
+    )
+    assert sum(space.n_of(chosen) for chosen in space.choices()) == space.n_mixtures
+
+
 def test_the_order_of_a_space_is_settled():
     parts = (Sublattice(("Zn", "Cd"), 1, 10), Sublattice(("S", "Se"), None, 10))
     assert formulas(*parts) == formulas(*parts)
@@ -108,7 +120,7 @@ def test_a_large_space_is_made_one_composition_at_a_time():
         (lambda: CompositionSpace((Sublattice(("Zn",), 1),)), "two or more"),
         (lambda: CompositionSpace((Sublattice(("Zn",)), Sublattice(("S",)))), "at most one"),
         (
-            lambda: Sublattice(("Zn", "Cd", "Mg", "Hg", "Mn"), 1, 0.5, 4).shares,
+            lambda: Sublattice(("Zn", "Cd", "Mg", "Hg", "Mn"), 1, 0.5, 4).mixtures,
             "too many mixtures",
         ),
     ],
