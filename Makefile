@@ -4,7 +4,7 @@ VENV := .venv
 BIN := $(VENV)/bin
 OUT ?= demo-run
 
-.PHONY: demo test clean evidence tables
+.PHONY: demo test clean evidence tables bench
 
 $(BIN)/fewnm: pyproject.toml requirements.lock
 	$(PYTHON) -c "import sys; sys.exit('fewnm needs Python 3.11 or newer') if sys.version_info < (3, 11) else None"
@@ -32,6 +32,10 @@ evidence: $(BIN)/fewnm
 # Crystallites by tight binding; rows on record are kept, a run that was stopped goes on.
 tables: $(BIN)/fewnm
 	$(BIN)/python -m features.computed_dots
+
+# Speed beside a plain pipeline; takes some minutes and writes docs/performance.md.
+bench: $(BIN)/fewnm
+	$(BIN)/python -m screening.bench docs/performance.md
 
 clean:
 	rm -rf $(VENV) build dist $(OUT)

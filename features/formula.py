@@ -9,7 +9,7 @@ import math
 import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cached_property, lru_cache
 from typing import Any, NoReturn
 
 from features.errors import FormulaError, explain
@@ -90,7 +90,7 @@ class Compound:
         total = math.fsum(amount for _, amount in self.parts)
         return {symbol: amount / total for symbol, amount in self.parts}
 
-    @property
+    @cached_property
     def formula(self) -> str:
         """Canonical formula: one text for every way to write the composition."""
         return "".join(symbol + _amount_text(amount) for symbol, amount in self.parts)

@@ -15,26 +15,24 @@ from typing import Any, Self
 import numpy as np
 import pandas as pd
 
-from features.confinement_features import ConfinementFeatures
-from features.size_gap import SMALLEST_DIAMETER_nm, size_band
+from features.size_gap import size_band
 from screening.blending import BlendedRegressor, LeftOut, blend
-from screening.bulk_spread import particle_gap_spread_eV
 from screening.calibration import GroupCalibration
-from screening.computed_rows import COMPUTED, computed_rows
+from screening.computed_rows import computed_rows
 from screening.covariance import CovarianceTerm, FloatArray
+from screening.dot_design import (
+    FIRST_FEATURE,
+    N_SMOOTH,
+    DotDesign,
+    constants_spread_eV,
+    scale_of,
+)
 
 __all__ = ["NEW", "ON_RECORD", "SizeGapModel", "State", "range_groups"]
 
 ON_RECORD = "on record"
 NEW = "new"
 
-_CONSTANTS = ["diameter_nm", "gap_eV", "electron_mass_m0", "hole_mass_m0", "dielectric"]
-_CENTRES = {
-    "log_reduced_mass": (np.log(0.1), 0.6),
-    "log_gap_size": (np.log(1.5), 0.8),
-    "log_dielectric": (np.log(7.0), 0.4),
-    "log_diameter": (np.log(3.5), 0.5),
-}
 _TERMS = (
     CovarianceTerm("level", amplitude=0.3),
     CovarianceTerm("bulk constants", (0, 1, 2), amplitude=0.2, length_scale=2, length_spread=0.7),
@@ -48,9 +46,7 @@ _TERMS = (
     CovarianceTerm("shape", labels=(7,), scale=8, amplitude=0.2),
 )
 _COMPUTED = CovarianceTerm("computed", labels=(9,), amplitude=0.2)
-_N_SMOOTH = len(_CENTRES)
-_N_GAUSSIAN = 10
-_SOURCE = _N_SMOOTH + 2
+_SOURCE = N_SMOOTH + 2
 _FEWEST_ROWS = 3
 
 
@@ -116,8 +112,8 @@ class SizeGapModel:
         self._theta = dict(theta or {})
         self._regressors: dict[str, BlendedRegressor] = {}
         self._base: SizeGapModel | None = None
-        self._label_codes()
-        _, mean, scale = self._columns(self.rows_, training=True)
+        self._design = DotDesign(self.rows_)
+        _, mean, scale = self._design.columns(self.rows_, training=True)
         self._target = (self.rows_["optical_gap_eV"].to_numpy() - mean) / scale
         self._noise = self.rows_["noise_eV"].to_numpy() / scale
         self._scale = scale
@@ -142,7 +138,7 @@ class SizeGapModel:
 
     def _fit_regressor(self, state: str) -> BlendedRegressor:
         rows = self._state_rows(state)
-        X, mean, scale = self._columns(rows, training=True)
+        X, mean, scale = self._design.columns(rows, training=True)
         target = (rows["optical_gap_eV"].to_numpy() - mean) / scale
         noise = rows["noise_eV"].to_numpy() / scale
         if self._base is not None:
@@ -155,7 +151,7 @@ class SizeGapModel:
         terms = [*_TERMS, _COMPUTED] if state == NEW and self.computed else list(_TERMS)
         return BlendedRegressor(
             terms=terms,
-            tree_columns=range(_N_GAUSSIAN, X.shape[1]),
+            tree_columns=range(FIRST_FEATURE, X.shape[1]),
             noise=0.02,
             tree_options={"max_bins": 48},
             n_folds=self.n_folds,
@@ -263,7 +259,7 @@ class SizeGapModel:
             Columns optical_gap_eV, model_sd_eV (uncalibrated, of the next measured sample) and
             record_state, with the caller's index.
         """
-        X, mean, scale = self._columns(candidates, training=False)
+        X, mean, scale = self._design.columns(candidates, training=False)
         record_state = self.record_state(candidates["material"])
         learned, spread = np.empty(len(candidates)), np.empty(len(candidates))
         for name, asked in self._rows_by_state(candidates):
@@ -271,7 +267,7 @@ class SizeGapModel:
             gaussian, trees, sd = regressor.parts(X[asked])
             learned[asked], sd = blend(gaussian, trees, sd, self.states_[name].gaussian_weight)
             spread[asked] = np.hypot(sd, regressor.gaussian_.noise_)
-        total = np.hypot(spread, _constants_spread_eV(candidates) / scale) * scale
+        total = np.hypot(spread, constants_spread_eV(candidates) / scale) * scale
         return pd.DataFrame(
             {
                 "optical_gap_eV": mean + learned * scale,
@@ -283,7 +279,7 @@ class SizeGapModel:
 
     def design(self, candidates: pd.DataFrame) -> FloatArray:
         """Return the regressors' columns of candidates, as of samples from no known source."""
-        return self._columns(candidates, training=False)[0]
+        return self._design.columns(candidates, training=False)[0]
 
     def scatter_sd_eV(self, candidates: pd.DataFrame) -> FloatArray:
         """Return the scatter between sources and samples of one pair, which no model narrows."""
@@ -293,7 +289,7 @@ class SizeGapModel:
             fitted = gaussian.term_parameters()
             between = sum(fitted[t.name].amplitude ** 2 for t in _TERMS if _SOURCE in t.labels)
             scatter[rows] = np.sqrt(between + gaussian.noise_**2)
-        return scatter * self.scale_of(candidates)
+        return scatter * scale_of(candidates)
 
     def joint_covariance(self, candidates: pd.DataFrame) -> FloatArray:
         """Return how the errors of candidates vary together, uncalibrated, in eV squared.
@@ -309,11 +305,11 @@ class SizeGapModel:
             Covariance of the Gaussian processes; candidates of one material that has no records
             share its unknown offset. Candidates of different states count as independent.
         """
-        X, _, scale = self._columns(candidates, training=False)
+        X, _, scale = self._design.columns(candidates, training=False)
         labels = {
-            _N_SMOOTH: candidates["family"],
-            _N_SMOOTH + 1: candidates["material"],
-            _N_SMOOTH + 3: candidates["shape"] + " " + candidates["material"],
+            N_SMOOTH: candidates["family"],
+            N_SMOOTH + 1: candidates["material"],
+            N_SMOOTH + 3: candidates["shape"] + " " + candidates["material"],
         }
         for column, names in labels.items():
             unseen = X[:, column] < 0.0
@@ -335,7 +331,7 @@ class SizeGapModel:
         noise = np.empty(len(candidates))
         for name, rows in self._rows_by_state(candidates):
             noise[rows] = self.regressor(name).gaussian_.noise_
-        return noise * self.scale_of(candidates)
+        return noise * scale_of(candidates)
 
     def _rows_by_state(self, candidates: pd.DataFrame) -> list[tuple[str, Any]]:
         """Return the positions of the candidates of each state that occurs."""
@@ -357,83 +353,10 @@ class SizeGapModel:
             low[rows], high[rows] = state.calibration.interval(mean, sd, level)
         return low, high
 
-    @staticmethod
-    def coordinates(frame: pd.DataFrame) -> FloatArray:
-        """Return the scaled constants and size in which the covariance measures distance.
-
-        Returns
-        -------
-        ndarray of shape (n_rows, 4)
-        """
-        features = ConfinementFeatures().fit_transform(frame[_CONSTANTS])
-        columns = [(features[n] - centre) / width for n, (centre, width) in _CENTRES.items()]
-        return np.column_stack(columns).astype(np.float64)
-
-    @staticmethod
-    def size_coordinate(diameter_nm: FloatArray) -> FloatArray:
-        """Return sizes in the scaled logarithm that the covariance reads."""
-        centre, width = _CENTRES["log_diameter"]
-        return np.asarray((np.log(diameter_nm) - centre) / width)
-
-    def regressor_columns(self, candidates: pd.DataFrame) -> FloatArray:
-        """Return the columns that the regressors read, one row a candidate."""
-        return self._columns(candidates, training=False)[0]
+    def training_design(self) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Return columns, physics mean (eV) and scale (eV) of the training rows."""
+        return self._design.columns(self.rows_, training=True)
 
     def physics_of(self, candidates: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
         """Return the physics mean and what the bulk constants leave open, eV."""
-        return self._columns(candidates, training=False)[1], _constants_spread_eV(candidates)
-
-    def _label_codes(self) -> None:
-        sources = self.rows_["source"] + " " + self.rows_["material"]
-        materials = pd.concat([self.rows_["material"], computed_rows()["material"]])
-        shapes = self.rows_["shape"] + " " + self.rows_["material"]
-        self._codes = {
-            "family": _codes(self.rows_["family"]),
-            "material": _codes(materials),
-            "source": _codes(sources),
-            "shape": _codes(shapes),
-        }
-
-    def _columns(
-        self, frame: pd.DataFrame, *, training: bool
-    ) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Return regressor columns, physics mean (eV) and scale (eV) of rows."""
-        features = ConfinementFeatures().fit_transform(frame[_CONSTANTS])
-        smooth = [(features[name] - centre) / width for name, (centre, width) in _CENTRES.items()]
-        source = frame["source"] + " " + frame["material"] if training else None
-        no_label = pd.Series(-1.0, index=frame.index)
-        labels: list[pd.Series] = [
-            frame["family"].map(self._codes["family"]),
-            frame["material"].map(self._codes["material"]),
-            no_label if source is None else source.map(self._codes["source"]),
-            (frame["shape"] + " " + frame["material"]).map(self._codes["shape"]),
-            frame["shape"].ne("sphere").astype(float),
-            frame["source"].map({COMPUTED: 0.0}) if training else no_label,
-        ]
-        block = np.column_stack([*smooth, *[label.fillna(-1) for label in labels], features])
-        mean = frame["gap_eV"].to_numpy() + features["finite_barrier_shift_eV"].to_numpy()
-        return block.astype(np.float64), mean, self.scale_of(frame)
-
-    @staticmethod
-    def scale_of(frame: pd.DataFrame) -> FloatArray:
-        """Return the energy (eV) that one unit of the learned quantity stands for.
-
-        Returns
-        -------
-        ndarray of shape (n_rows,)
-        """
-        diameter = frame["diameter_nm"].to_numpy(dtype=np.float64)
-        return np.asarray(1.0 / np.maximum(diameter, SMALLEST_DIAMETER_nm))
-
-
-def _constants_spread_eV(candidates: pd.DataFrame) -> FloatArray:
-    """Return what the bulk constants' uncertainty leaves: all of them where they are estimated."""
-    gap_sd = candidates["gap_sd_eV"].to_numpy(dtype=np.float64)
-    if "basis" not in candidates:
-        return gap_sd
-    spread = particle_gap_spread_eV(candidates)
-    return np.where(candidates["basis"].eq("record"), gap_sd, spread)
-
-
-def _codes(values: pd.Series) -> dict[str, int]:
-    return {name: code for code, name in enumerate(sorted(values.unique()))}
+        return self._design.columns(candidates, training=False)[1], constants_spread_eV(candidates)

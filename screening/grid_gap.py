@@ -18,6 +18,7 @@ from scipy.linalg import solve_triangular
 from features.confinement import coulomb_energy_eV
 from features.finite_barrier import finite_barrier_energy_eV
 from screening.covariance import CovarianceTerm, FloatArray, TermParameters
+from screening.dot_design import scale_of, size_coordinate
 
 if TYPE_CHECKING:
     from screening.dots import SizeGapModel
@@ -104,8 +105,8 @@ class GridGap:
         self._X, self._alpha, self._cholesky = gaussian.factorised()
         self._terms = list(zip(gaussian.terms_, gaussian.term_parameters().values(), strict=True))
         self._lengths = self._size_lengths()
-        self.scale = model.scale_of(pd.DataFrame({"diameter_nm": diameter_nm}))
-        self._sizes = self._size_factors(model.size_coordinate(diameter_nm))
+        self.scale = scale_of(pd.DataFrame({"diameter_nm": diameter_nm}))
+        self._sizes = self._size_factors(size_coordinate(diameter_nm))
 
     def _size_lengths(self) -> list[float | None]:
         """Return the different length scales in size; None for terms without one."""
@@ -138,7 +139,7 @@ class GridGap:
         -------
         GridBlock
         """
-        X = self.model.regressor_columns(frame)
+        X = self.model.design(frame)
         factors = [np.zeros((len(X), len(self._X))) for _ in self._lengths]
         prior = np.zeros((len(X), len(self._lengths)))
         for term, parameters in self._terms:
@@ -208,7 +209,7 @@ class GridGap:
         ndarray of shape (n_compositions, n_sizes)
         """
         nodes, matrix = chebyshev_matrix(np.log(self.diameter_nm), _N_NODES)
-        factors = self._size_factors(self.model.size_coordinate(np.exp(nodes)))
+        factors = self._size_factors(size_coordinate(np.exp(nodes)))
         n = len(block.frame)
         found = np.empty((n, _N_NODES))
         for node in range(_N_NODES):

@@ -15,6 +15,7 @@ from scipy.stats import spearmanr
 
 from features.size_gap import LARGEST_DIAMETER_nm, SMALLEST_DIAMETER_nm
 from screening.covariance import FloatArray
+from screening.dot_design import scale_of
 from screening.dots import ON_RECORD, SizeGapModel
 from screening.measurements import measured_rows
 
@@ -103,7 +104,7 @@ def _log_evidence(model: SizeGapModel, rows: pd.DataFrame) -> float:
     joined = model.conditioned(rows)
     # The Gaussian process sees gaps over a scale that depends on the size.
     return joined.regressor(ON_RECORD).gaussian_.log_posterior_ - float(
-        np.log(joined.scale_of(rows)).sum()
+        np.log(scale_of(rows)).sum()
     )
 
 

@@ -11,6 +11,7 @@ from features.errors import NothingQualifiesError, explain
 from features.formula import parse_formula
 from features.hazards import caution_text
 from features.semiconductors import has_indirect_gap
+from screening.dot_design import coordinates
 from screening.dots import ON_RECORD, SizeGapModel
 from screening.limits import REJECTED, judge
 from screening.tracks import track_of
@@ -257,7 +258,7 @@ def nearest_records(frame: pd.DataFrame, model: SizeGapModel) -> list[str]:
         ``material diameter: source key``.
     """
     rows = model.rows_
-    trained, wanted = model.coordinates(rows), model.coordinates(frame)
+    trained, wanted = coordinates(rows), coordinates(frame)
     names = []
     for position, (material, state) in enumerate(
         zip(frame["material"], frame["record_state"], strict=True)

@@ -18,7 +18,7 @@ from zipfile import BadZipFile
 
 import numpy as np
 import pandas as pd
-from joblib import Parallel, delayed, effective_n_jobs
+from joblib import Parallel, delayed
 
 from features.formula import Compound, parse_formula
 from features.semiconductors import recorded_name
@@ -36,7 +36,7 @@ if TYPE_CHECKING:
 
 __all__ = ["Sweep", "SweepCounts", "count_mixtures", "enumerate_compositions"]
 
-_BLOCK = 256
+_BLOCK = 1024
 _CHUNK = 400
 _TIE = 1e-8
 _UNKNOWN = "no solid solution of materials on record"
@@ -195,6 +195,8 @@ class Sweep:
         self.counts = SweepCounts()
         self._pool = _pool([], [], [])
         self._scored: list[pd.DataFrame] = []
+        self._taken_up: list[Found] = []
+        self._least = 0.0
         self._listed = pd.DataFrame()
 
     def run(self, named: list[str]) -> list[str]:
@@ -210,17 +212,32 @@ class Sweep:
         list of str
             The materials of the shortlist, sorted; empty where nothing qualifies.
         """
-        names = self._names(named)
-        least = max(self.specification.shortlist.least_chance, 1e-12)
-        number = 0
-        while blocks := list(islice(_batches(names), 2 * effective_n_jobs(None))):
-            tasks = [(number + at, block) for at, block in enumerate(blocks)]
-            number += len(blocks)
-            for found in self._searched(tasks, least):
-                self.counts.add(found)
-                self._take(found)
-            least = self._cut(least)
+        for state in self.model.states_:
+            # fitted here once, not in every worker again
+            self.model.regressor(state)
+        self._least = max(self.specification.shortlist.least_chance, 1e-12)
+        parallel = Parallel(return_as="generator", pre_dispatch="3*n_jobs")
+        for found in parallel(self._tasks(self._names(named))):
+            self._meet(found)
+        for found in self._taken_up:
+            self._meet(found)
         return sorted(set(self._listed["material"])) if len(self._listed) else []
+
+    def _meet(self, found: Found) -> None:
+        self.counts.add(found)
+        rows = _pool(found.material, found.diameter_nm, found.chance)
+        self._pool = pd.concat([self._pool, rows], ignore_index=True)
+        self._least = self._cut(self._least)
+
+    def _tasks(self, names: Iterator[str]) -> Iterator[Any]:
+        """Yield one task a block that is not on disk yet, asking what the list asks by then."""
+        for number, block in enumerate(_batches(names)):
+            path = self._path(number, block)
+            found = _read(path)
+            if found is not None:
+                self._taken_up.append(found)
+                continue
+            yield delayed(_search)(self.model, block, self.question, self._least, path)
 
     def _names(self, named: list[str]) -> Iterator[str]:
         known = set(named)
@@ -229,29 +246,11 @@ class Sweep:
             if name not in known:
                 yield name
 
-    def _searched(self, tasks: list[tuple[int, list[str]]], least: float) -> list[Found]:
-        """Return the blocks' findings in order, from disk where they are kept."""
-        read = [_read(self._path(number, block)) for number, block in tasks]
-        open_ = [at for at, found in enumerate(read) if found is None]
-        made = Parallel()(
-            delayed(search_block)(self.model, tasks[at][1], self.question, least) for at in open_
-        )
-        for at, found in zip(open_, made, strict=True):
-            read[at] = found
-            path = self._path(*tasks[at])
-            if path is not None:
-                _keep(path, found)
-        return [found for found in read if found is not None]
-
     def _path(self, number: int, block: list[str]) -> Path | None:
         if self.kept is None:
             return None
         content = text_hash(json.dumps([self.key, block]))[:24]
         return self.kept / f"{number:07d}-{content}.npz"
-
-    def _take(self, found: Found) -> None:
-        rows = _pool(found.material, found.diameter_nm, found.chance)
-        self._pool = pd.concat([self._pool, rows], ignore_index=True)
 
     def _cut(self, least: float) -> float:
         """Score the likeliest pairs until the list is settled; return the chance that it asks."""
@@ -284,6 +283,20 @@ class Sweep:
         from screening.ranking import shortlist_of  # noqa: PLC0415 - it imports the tracks
 
         return shortlist_of(scored, self.specification, self.track)
+
+
+def _search(
+    model: "SizeGapModel",
+    block: list[str],
+    question: BlockQuestion,
+    least: float,
+    path: Path | None,
+) -> Found:
+    """Search a block and keep what was found."""
+    found = search_block(model, block, question, least)
+    if path is not None:
+        _keep(path, found)
+    return found
 
 
 def _pool(material: Any, diameter_nm: Any, chance: Any) -> pd.DataFrame:

@@ -301,7 +301,7 @@ def _exact_trees(grid: GridGap, frame: pd.DataFrame, at: IntArray, size: IntArra
     if grid.weight >= 1.0 or not len(at):
         return np.zeros(len(at))
     pairs = frame.iloc[at].assign(diameter_nm=grid.diameter_nm[size])
-    return grid.regressor.trees_at(grid.model.regressor_columns(pairs))
+    return grid.regressor.trees_at(grid.model.design(pairs))
 
 
 def _exact_chance(

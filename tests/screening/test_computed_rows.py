@@ -43,7 +43,7 @@ def test_a_material_never_measured_follows_its_computed_crystallites(rows):
     miss = {}
     for use in (True, False):
         model = SizeGapModel(computed=use).fit(rows[~own])
-        X, mean, scale = model._columns(frame, training=False)
+        X, mean, scale = model._design.columns(frame, training=False)
         learned = model.regressor(NEW).gaussian_.predict(X)
         miss[use] = abs(float((mean + learned * scale)[0]) - target)
     assert miss[True] < miss[False]

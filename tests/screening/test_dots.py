@@ -76,8 +76,8 @@ def test_permuting_the_targets_of_a_left_out_material_changes_nothing_learned(ro
     )
     asked = pair_frame(pd.DataFrame({"material": ["CdSe"], "diameter_nm": [3.0]}))
     np.testing.assert_array_equal(
-        first.regressor(NEW).parts(first._columns(asked, training=False)[0]),
-        second.regressor(NEW).parts(second._columns(asked, training=False)[0]),
+        first.regressor(NEW).parts(first.design(asked)),
+        second.regressor(NEW).parts(second.design(asked)),
     )
 
 
