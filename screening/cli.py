@@ -135,6 +135,9 @@ def rank(
     out: Annotated[Path, typer.Option(help="Folder for the results; made if missing.")],
     overwrite: Annotated[bool, typer.Option(help="Replace an earlier run in the folder.")] = False,
     results: Annotated[Path | None, typer.Option(help="CSV of your own results.")] = None,
+    jobs: Annotated[
+        int, typer.Option(min=1, max=256, help="Worker processes for candidate spaces.")
+    ] = 2,
 ) -> None:
     """Rank candidates and write the shortlist, the report and the manifest.
 
@@ -149,12 +152,29 @@ def rank(
     existed = out.exists()
     if existed:
         prepare_folder(out, overwrite=overwrite)
-    with _Stage(f"Ranking: {specification.title}"):
+    from joblib import parallel_config
+
+    with _Stage(_ranking_words(specification)), parallel_config(n_jobs=jobs):
         run = run_rank(specification, out, overwrite=overwrite, results=own)
     for finding in run.result.update.findings if run.result.update else ():
         _say(f"Your results: {finding}.")
     _say(_shortlist_text(run.result))
     _say(f"Report: {run.folder / 'report.html'}")
+
+
+def _ranking_words(specification: Any) -> str:
+    """Say what is ranked, and how many mixtures its spaces hold."""
+    if not specification.candidates.spaces:
+        return f"Ranking: {specification.title}"
+    from screening.candidates import size_grid
+    from screening.sweep import count_mixtures
+
+    n_mixtures = count_mixtures(specification.candidates)
+    n_sizes = len(size_grid(specification.candidates))
+    return (
+        f"Ranking: {specification.title}: up to {n_mixtures:,} compositions at {n_sizes} sizes, "
+        f"{n_mixtures * n_sizes:,} pairs"
+    )
 
 
 def _shortlist_text(result: Any) -> str:

@@ -13,10 +13,12 @@ from screening.candidates import candidate_grid, choose_materials
 from screening.dots import SizeGapModel
 from screening.fingerprint import text_hash
 from screening.ranking import COLUMNS, caution_column, nearest_records
+from screening.reach import FAR, distance_to_data
 from screening.scores import Window, describe, score
 from screening.sweep import Sweep, SweepCounts
 from screening.tracks import Sections
 from screening.trained import dot_fingerprint, trained_dots
+from screening.uncertainty_split import uncertainty_parts
 
 if TYPE_CHECKING:
     from screening.ranking import RankResult
@@ -120,17 +122,26 @@ class EmissionTrack:
         return keys, [False, False, True, True]
 
     def finish(self, best: pd.DataFrame, model: SizeGapModel) -> pd.DataFrame:
-        """Add the nearest record and the cautions."""
-        return best.assign(
+        """Add distance to the data, parts of the uncertainty, nearest record and cautions."""
+        parts = uncertainty_parts(model, best, self.specification.target.quantity)
+        described = best.join(distance_to_data(model, best)[["kernel_distance", "reach"]]).join(
+            parts[[name for name in parts if name in self.columns]]
+        )
+        return described.assign(
             nearest_source=nearest_records(best, model), cautions=caution_column(best["material"])
         )
 
     def warnings(self, result: "RankResult") -> list[str]:
-        """Count the materials without size data."""
+        """Count the materials without size data, and those farther out than was ever checked."""
+        notes = []
+        n_rows = len(result.shortlist)
         new = result.shortlist["record_state"].eq("new").sum()
-        if not new:
-            return []
-        return [f"{new} of {len(result.shortlist)} rows are materials without size data"]
+        if new:
+            notes.append(f"{new} of {n_rows} rows are materials without size data")
+        far = result.shortlist["reach"].eq(FAR).sum()
+        if far:
+            notes.append(f"{far} of {n_rows} rows lie farther from the data than was ever checked")
+        return notes
 
     def draw(self, result: "RankResult", ax: Any) -> Any:
         """Draw gap against size with the window and the shortlist."""
