@@ -16,6 +16,7 @@ from screening.reporting.figures import (
     figure_svg,
 )
 from screening.reporting.swatch import emission_colour
+from screening.reporting.trade_offs import draw_trade_offs
 from screening.tracks import Sections
 
 __all__ = ["emission_sections"]
@@ -45,6 +46,9 @@ def emission_sections(result: RankResult, evidence: pd.DataFrame) -> Sections:
             "map_rows": curve_numbers(result).to_dict("records"),
             "interval_svg": Markup(_interval_svg(result)),  # noqa: S704 - drawn here, names escaped
             "interval_caption": _interval_caption(result),
+            "trade_svg": Markup(_trade_svg(result)),  # noqa: S704 - drawn here, names escaped
+            "trade_caption": _trade_caption(result),
+            "own": _own(result),
             "evidence": plain_rows(evidence),
             "changes": _changes(result),
             "sources": _sources(result),
@@ -139,6 +143,42 @@ def _interval_caption(result: RankResult) -> str:
         f"Mean width of the 90 % intervals: {', '.join(parts)}; the window is "
         f"{high - low:.3f} eV wide."
     )
+
+
+def _trade_svg(result: RankResult) -> str:
+    return figure_svg(
+        draw_trade_offs(result),
+        "Chance against size tolerance",
+        "One mark a listed candidate: across, the drift of the diameter that it bears; upwards, "
+        "its chance. Marks tell hazard classes, rings the candidates that no other beats.",
+        "trade-offs",
+    )
+
+
+def _trade_caption(result: RankResult) -> str:
+    listed = result.shortlist
+    free = listed[listed["is_unbeaten"]]
+    names = ", ".join(short(name) for name in free["material"].head(4))
+    more = f" and {len(free) - 4} more" if len(free) > 4 else ""
+    mildest = listed.iloc[int(listed["hazard_class"].to_numpy().argmin())]
+    return (
+        f"{names}{more} are beaten by no other row in chance, tolerance, hazard and supply "
+        f"together. The lowest hazard class listed is {mildest['hazard_class']} of 4 "
+        f"({short(mildest['material'])}); a class is no clearance."
+    )
+
+
+def _own(result: RankResult) -> dict[str, Any] | None:
+    """Return what the laboratory's results changed, or nothing."""
+    if result.update is None or result.before is None:
+        return None
+    return {
+        "bias": result.update.bias.mean,
+        "bias_sd": result.update.bias.sd,
+        "findings": result.update.findings,
+        "rows": plain_rows(result.update.results),
+        "before": plain_rows(result.before.head(5)),
+    }
 
 
 def _changes(result: RankResult) -> list[str]:

@@ -56,7 +56,7 @@ def render_report(result: RankResult, manifest: Mapping[str, Any], evidence: pd.
     return str(
         page.render(
             title=result.specification.title,
-            rejected=plain_rows(result.rejected),
+            rejected=plain_rows(_likeliest_first(result.rejected)),
             manifest=json.dumps(manifest, indent=2, ensure_ascii=False),
             warnings=manifest.get("warnings", []),
             style=Markup(style),  # noqa: S704 - a file of this package
@@ -66,3 +66,12 @@ def render_report(result: RankResult, manifest: Mapping[str, Any], evidence: pd.
             **sections.values,
         )
     )
+
+
+def _likeliest_first(rejected: pd.DataFrame) -> pd.DataFrame:
+    """Put what would have hit the window most likely first, and nothing but numbers in doubt."""
+    numbers = rejected.assign(
+        chance=pd.to_numeric(rejected["chance"]),
+        chance_in_window=pd.to_numeric(rejected["chance_in_window"]),
+    )
+    return numbers.sort_values("chance_in_window", ascending=False, kind="stable")
