@@ -19,6 +19,7 @@ from features.adsorption_descriptors import (
 )
 from features.errors import TableError, explain
 from screening.adsorption_alloys import AlloySurfaceModel
+from screening.adsorption_answers import NORMAL_90, result_frame, site_frame
 from screening.adsorption_design import FAMILIES, alloy_rows, family_of
 from screening.adsorption_pure import PureSurfaceModel, pure_rows
 from screening.adsorption_questions import close_packed_structure, read_surfaces
@@ -42,8 +43,6 @@ RECORD_STATES = (
     "mixing rule",
 )
 """What stands behind a prediction."""
-
-_NORMAL_90 = 1.6448536269514722
 
 
 def pure_models_without(
@@ -206,7 +205,7 @@ class AdsorptionModel:
         first, second, share = alloy_parts(material)
         parts = {first: 1.0} if first == second else {first: share, second: 1.0 - share}
         shift, sd = self.sites_.shift(parts, adsorbate, coordination, close_packed_structure(first))
-        return _site_frame(terrace, shift, sd, sites.index)
+        return site_frame(terrace, shift, sd, sites.index)
 
     def calibration(self, state: str, adsorbate: str) -> GroupCalibration:
         """Return the calibration behind a record state of `predict_surfaces`."""
@@ -249,14 +248,14 @@ class AdsorptionModel:
     def _pure(self, rows: pd.DataFrame) -> pd.DataFrame:
         pure = rows[rows["first"] == rows["second"]]
         if pure.empty:
-            return _result(pure, np.empty(0), np.empty(0), np.empty(0), [], [])
+            return result_frame(pure, np.empty(0), np.empty(0), np.empty(0), [], [])
         found = self.pure_.predict(
             pure["first"].tolist(), pure["adsorbate"].tolist(), pure["openness"].to_numpy()
         )
         state = [self._pure_state(row) for row in pure.itertuples()]
         factor = np.array([self.calibrations_[s].factor(LEVEL) for s in state])
         near = [self._nearest_metal(row) for row in pure.itertuples()]
-        return _result(pure, found.mean, found.sd, factor * found.sd, state, near)
+        return result_frame(pure, found.mean, found.sd, factor * found.sd, state, near)
 
     def _pure_state(self, row: Any) -> str:
         table = self.pure_.rows_
@@ -316,9 +315,10 @@ class AdsorptionModel:
             mean, sd = self.families_[name].predict(rows)
             factor = self.families_[name].calibration_.factor(LEVEL)
         shift, shift_sd = self._open_face(rows)
-        half = np.hypot(factor * sd, _NORMAL_90 * shift_sd)
+        half = np.hypot(factor * sd, NORMAL_90 * shift_sd)
         near = [self._nearest_alloy(row) for row in rows.itertuples()]
-        return _result(rows, mean + shift, np.hypot(sd, shift_sd), half, [state] * len(rows), near)
+        states = [state] * len(rows)
+        return result_frame(rows, mean + shift, np.hypot(sd, shift_sd), half, states, near)
 
     def _open_face(self, rows: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
         """Return the shift of open alloy faces: the share-weighted mean over the pure metals."""
@@ -357,46 +357,6 @@ def _shifted(alloys: pd.DataFrame, pure: PureSurfaceModel) -> pd.DataFrame:
     keys = pd.MultiIndex.from_frame(alloys[["source", "adsorbate"]])
     shift = offsets.reindex(keys).fillna(0.0).to_numpy()
     return alloys.assign(energy_eV=alloys["energy_eV"] - shift)
-
-
-def _result(
-    rows: pd.DataFrame,
-    mean: FloatArray,
-    sd: FloatArray,
-    half: FloatArray,
-    state: list[str],
-    near: list[str],
-) -> pd.DataFrame:
-    return pd.DataFrame(
-        {
-            "adsorption_energy_eV": mean,
-            "adsorption_energy_low_eV": mean - half,
-            "adsorption_energy_high_eV": mean + half,
-            "adsorption_energy_sd_eV": sd,
-            "record_state": state,
-            "nearest_source": near,
-        },
-        index=rows.index,
-    )
-
-
-def _site_frame(
-    terrace: pd.Series, shift: FloatArray, sd: FloatArray, index: pd.Index
-) -> pd.DataFrame:
-    mean = float(terrace["adsorption_energy_eV"]) + shift
-    common = float(terrace["adsorption_energy_sd_eV"])
-    half = 0.5 * (terrace["adsorption_energy_high_eV"] - terrace["adsorption_energy_low_eV"])
-    near = [str(terrace["nearest_source"])] * len(shift)
-    state = [str(terrace["record_state"])] * len(shift)
-    frame = _result(
-        pd.DataFrame(index=index),
-        mean,
-        np.hypot(common, sd),
-        np.hypot(float(half), _NORMAL_90 * sd),
-        state,
-        near,
-    )
-    return frame.assign(terrace_sd_eV=common, site_sd_eV=sd)
 
 
 def adsorption_model() -> AdsorptionModel:

@@ -14,6 +14,7 @@ import pandas as pd
 from scipy.special import ndtr
 
 from screening.adsorption import AdsorptionModel
+from screening.adsorption_answers import NORMAL_90
 from screening.catalyst_sites import ParticleSites, particle_sites
 from screening.covariance import FloatArray
 from screening.site_levels import Draws, SiteLevel, site_level
@@ -24,7 +25,6 @@ __all__ = ["REFERENCE_PARTICLE", "score_particles"]
 REFERENCE_PARTICLE = ("Pt", "truncated_octahedron", 3.0)
 """Particle to which relative volcano activities refer: metal, shape, diameter in nm."""
 
-_NORMAL_90 = 1.6448536269514722
 _SIZES_AT_ONCE = 64
 
 
@@ -46,13 +46,12 @@ def _descriptors(
         shift, slope_sd, own_sd = (np.zeros_like(sites.n_sites) for _ in range(3))
     else:
         shift, slope_sd, own_sd = level.shift_eV(sites.coordination)
-    sign = np.sign(shift) if level.slope >= 0.0 else -np.sign(shift)
     slope = draws.named(f"slope {level.material}")
     own = np.stack([draws.named(f"{level.structure} {name}") for name in sites.names])
     common = level.error_eV - level.reference_error_eV
     common = common + question.shared_sd_eV * draws.named("shared")
     centre = level.descriptor_eV + shift
-    drawn = centre[:, :, None] + common + (sign * slope_sd)[:, :, None] * slope
+    drawn = centre[:, :, None] + common + slope_sd[:, :, None] * slope
     return _Descriptors(centre, slope_sd, own_sd, drawn + own_sd[:, :, None] * own)
 
 
@@ -111,7 +110,7 @@ def _energies(frame: pd.DataFrame, level: SiteLevel, question: SurfaceQuestion) 
     """Add the adsorption energy of the best site, its free energy and the descriptor's interval."""
     shift = frame["descriptor_eV"] - level.descriptor_eV
     frame["adsorption_energy_eV"] = level.energy_eV + shift
-    half = np.hypot(level.energy_half_eV, _NORMAL_90 * frame["site_sd_eV"])
+    half = np.hypot(level.energy_half_eV, NORMAL_90 * frame["site_sd_eV"])
     frame["adsorption_energy_low_eV"] = frame["adsorption_energy_eV"] - half
     frame["adsorption_energy_high_eV"] = frame["adsorption_energy_eV"] + half
     correction = question.correction_eV
@@ -120,7 +119,7 @@ def _energies(frame: pd.DataFrame, level: SiteLevel, question: SurfaceQuestion) 
     )
     errors = np.sort(level.error_eV - level.reference_error_eV)
     common = 0.5 * float(np.quantile(errors, 0.95) - np.quantile(errors, 0.05))
-    wide = np.hypot(common, _NORMAL_90 * np.hypot(frame["site_sd_eV"], question.shared_sd_eV))
+    wide = np.hypot(common, NORMAL_90 * np.hypot(frame["site_sd_eV"], question.shared_sd_eV))
     frame["descriptor_low_eV"] = frame["descriptor_eV"] - wide
     frame["descriptor_high_eV"] = frame["descriptor_eV"] + wide
     return frame.assign(

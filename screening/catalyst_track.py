@@ -148,23 +148,19 @@ class CatalystTrack:
         return score_particles(model, grid, self.question, self.specification.seed)
 
     def order(self, scored: pd.DataFrame) -> tuple[pd.DataFrame, list[bool]]:
-        """Sort by relative volcano activity per mass, or by sites in the window per gram."""
-        value = (
-            np.log10(np.maximum(scored["relative_volcano_activity_per_mass"], 1e-300))
-            if self.question.volcano
-            else scored["sites_in_window_umol_per_g"]
-        )
-        keys = pd.DataFrame(
-            {
-                "value": np.asarray(value).round(6),
-                "chance": scored["chance_in_window"].to_numpy().round(9),
-                "material": scored["material"].to_numpy(),
-                "shape": scored["shape"].to_numpy(),
-                "diameter_nm": scored["diameter_nm"].to_numpy(),
-            },
-            index=scored.index,
-        )
-        return keys, [False, False, True, True, True]
+        """Sort by relative volcano activity per mass, or metals by chance and sizes by sites."""
+        keys = scored[["material", "shape", "diameter_nm"]].copy()
+        if self.question.volcano:
+            activity = np.maximum(scored["relative_volcano_activity_per_mass"], 1e-300)
+            keys.insert(0, "activity", np.log10(activity).round(6))
+            keys.insert(1, "chance", scored["chance_in_window"].round(9))
+            return keys, [False, False, True, True, True]
+        sites = scored["sites_in_window_umol_per_g"].round(6)
+        richest = sites.groupby(scored["material"]).idxmax()
+        chance = scored["chance_in_window"].loc[richest].set_axis(richest.index)
+        keys.insert(0, "chance", scored["material"].map(chance).round(9))
+        keys.insert(2, "sites", sites)
+        return keys, [False, True, False, True, True]
 
     def finish(
         self,

@@ -92,11 +92,15 @@ class SiteLevel:
     nearest_source: str
 
     def shift_eV(self, generalised_coordination: FloatArray) -> tuple[FloatArray, ...]:
-        """Return the mean shift of sites from the terrace, the slope's and the sites' own sd."""
+        """Return how far sites lie from the terrace: mean, by one sd of the slope, own sd.
+
+        The second keeps its sign: one error of the slope moves sites on either side of the terrace
+        apart.
+        """
         step = coordination_step(generalised_coordination, self.structure)
         return (
             self.slope * step,
-            self.slope_sd * np.abs(step),
+            self.slope_sd * step,
             self.scatter * site_scatter_eV(step),
         )
 

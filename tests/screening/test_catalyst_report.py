@@ -72,7 +72,7 @@ def test_the_same_result_gives_the_same_bytes(metals, window_page):
 
 def test_a_window_promises_no_volcano(window_page):
     assert "volcano" not in window_page
-    assert "sites expected in the window per gram" in window_page
+    assert "chance that their best sites lie in the window" in window_page
 
 
 def test_the_picture_of_a_particle_counts_its_atoms():

@@ -30,11 +30,24 @@ def result(metals):
     return rank(parse_specification(OXYGEN), metals)
 
 
-def test_a_window_ranks_by_sites_per_gram(result):
+def test_a_window_ranks_metals_by_chance_and_their_sizes_by_sites_per_gram(result):
     assert tuple(result.shortlist.columns) == COLUMNS
-    assert result.shortlist["sites_in_window_umol_per_g"].is_monotonic_decreasing
+    assert result.shortlist["chance_in_window"].is_monotonic_decreasing
+    best = result.scored.groupby("material")["sites_in_window_umol_per_g"].max()
+    for row in result.shortlist.itertuples():
+        assert row.sites_in_window_umol_per_g == best[row.material]
     assert result.shortlist["rank"].tolist() == list(range(1, len(result.shortlist) + 1))
     assert result.shortlist["material"].is_unique
+
+
+def test_platinum_metals_and_copper_are_likeliest_to_hold_hydrogen_loosely(metals):
+    # Norskov et al., J. Electrochem. Soc. 152, J23 (2005): free energies near zero; Ag, Au weak,
+    # W, Mo, Nb strong
+    free = {"quantity": "adsorption_free_energy", "adsorbate": "H", "window_eV": [-0.15, 0.15]}
+    asked = {"target": free, "candidates": {"diameter_nm": [2, 4], "step_nm": 1.0}}
+    listed = rank(parse_specification(asked), metals).shortlist["material"].tolist()
+    assert {"Pt", "Pd"} < set(listed[:6])
+    assert not {"Au", "Ag", "W", "Mo", "Nb"} & set(listed[:6])
 
 
 def test_a_reaction_ranks_by_relative_volcano_activity_per_mass(metals):
