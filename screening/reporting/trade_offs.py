@@ -31,7 +31,7 @@ def draw_trade_offs(result: "RankResult", ax: Any = None) -> Any:
     listed = result.shortlist
     for hazard, part in listed.groupby("hazard_class", sort=True):
         at = (part["size_tolerance_nm"], part["chance_in_window"])
-        colour, mark = _COLOURS[int(hazard)], _MARKS[int(hazard)]
+        colour, mark = _COLOURS[int(str(hazard))], _MARKS[int(str(hazard))]
         axes.scatter(*at, marker=mark, color=colour, s=46, label=f"hazard class {hazard}")
     free = listed[listed["is_unbeaten"]]
     axes.scatter(
