@@ -4,7 +4,7 @@ VENV := .venv
 BIN := $(VENV)/bin
 OUT ?= demo-run
 
-.PHONY: demo test clean evidence tables bench
+.PHONY: demo test clean evidence tables bench rehearsal
 
 $(BIN)/fewnm: pyproject.toml requirements.lock
 	$(PYTHON) -c "import sys; sys.exit('fewnm needs Python 3.11 or newer') if sys.version_info < (3, 11) else None"
@@ -36,6 +36,11 @@ tables: $(BIN)/fewnm
 # Speed beside a plain pipeline; takes some minutes and writes docs/performance.md.
 bench: $(BIN)/fewnm
 	$(BIN)/python -m screening.bench docs/performance.md
+
+# Discovery replayed for every policy; takes some minutes and writes docs/rehearsal.md.
+rehearsal: $(BIN)/fewnm
+	$(BIN)/fewnm rehearse --out build/rehearsal --overwrite
+	cp build/rehearsal/rehearsal.md docs/rehearsal.md
 
 clean:
 	rm -rf $(VENV) build dist $(OUT)

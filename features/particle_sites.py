@@ -71,7 +71,7 @@ def resolved_counts(
     >>> counts = resolved_counts("Pt", "octahedron", [3.0])
     >>> sorted({round(float(g), 2) for c, g in zip(counts.classes,
     ...     counts.generalised_coordination[0]) if c.site == "terrace"})
-    [6.83, 6.92, 7.5]
+    [6.5, 6.83, 7.17, 7.5]
     """
     metal = metal_lattice(material) if isinstance(material, str) else material
     whole = particle_counts(metal, shape, diameter_nm)

@@ -204,10 +204,9 @@ class Specification(StrictPart):
         """Refuse candidates and limits that only the other track knows."""
         wanted = self.candidates
         if isinstance(self.target, SurfaceTarget):
-            if wanted.families or wanted.spaces:
-                raise ValueError(
-                    "candidates.families and spaces are for quantum dots: name metals instead"
-                )
+            for name in ("families", "spaces"):
+                if getattr(wanted, name):
+                    raise ValueError(f"candidates.{name} is for quantum dots: name metals instead")
         elif wanted.shapes:
             raise ValueError("candidates.shapes is for metal particles: leave it out")
         elif wanted.diameter_nm[0] < SMALLEST_DIAMETER_nm:
