@@ -302,11 +302,19 @@ def audit(
 @_guarded
 def data(
     name: Annotated[str | None, typer.Argument(help="Table to print as CSV.")] = None,
+    check: Annotated[Path | None, typer.Option(help="CSV of your own to check.")] = None,
 ) -> None:
-    """List the tables with counts and sources, or print one as CSV.
+    """List the tables with counts and sources, print one as CSV, or check one of your own.
 
     Example: fewnm data size_gap_records
     """
+    if check is not None:
+        if name is not None:
+            raise typer.BadParameter("give either a table's name or --check, not both")
+        from screening.table_check import check_text
+
+        typer.echo(check_text(check), nl=False)
+        return
     from screening.describing import data_text, table_text
 
     typer.echo(data_text() if name is None else table_text(name), nl=False)

@@ -31,6 +31,7 @@ __all__ = [
     "Target",
     "load_specification",
     "parse_specification",
+    "read_sizes",
 ]
 
 _LARGEST_FILE_BYTES = 1_000_000
@@ -337,13 +338,33 @@ def _with_tables(data: dict[str, Any], folder: Path) -> dict[str, Any]:
     laboratory: Any = data.get("laboratory")
     if not isinstance(laboratory, dict) or not isinstance(laboratory.get("sizes"), str):
         return data
-    name = laboratory["sizes"]
-    table = read_user_table(folder / name, ("diameter_nm",), ("count",))
+    sizes = read_sizes(folder / laboratory["sizes"])
+    return {**data, "laboratory": {**laboratory, "sizes": sizes}}
+
+
+def read_sizes(path: Path) -> dict[str, list[float]]:
+    """Read a table of a measured size distribution.
+
+    Parameters
+    ----------
+    path : pathlib.Path
+        CSV with the column diameter_nm and optionally count.
+
+    Returns
+    -------
+    dict of str to list of float
+        By column.
+
+    Raises
+    ------
+    TableError
+        With all faulty rows at once.
+    """
+    table = read_user_table(path, ("diameter_nm",), ("count",))
     columns, faults = {}, []
     for column in table.columns:
         low = 0.1 if column == "diameter_nm" else 0.0
         columns[column], wrong = numeric_column(table, column, low, 1e9, "")
         faults += wrong
-    collect_faults(name, faults)
-    sizes = {column: values.tolist() for column, values in columns.items()}
-    return {**data, "laboratory": {**laboratory, "sizes": sizes}}
+    collect_faults(path.name, faults)
+    return {column: values.tolist() for column, values in columns.items()}
