@@ -10,11 +10,15 @@ import re
 from collections.abc import Mapping
 from functools import cache
 
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
 from features.errors import FormulaError, PhysicsRangeError, explain
 
 __all__ = [
     "ORGANIC_CATIONS",
     "checked_composition",
+    "core_mass_share",
     "core_shell_composition",
     "mass_percent",
     "molar_mass_g",
@@ -185,3 +189,36 @@ def core_shell_composition(
             share = percent * mass / (core_mass + shell_mass) / _atomic_mass(symbol)
             moles[symbol] = moles.get(symbol, 0.0) + share
     return moles
+
+
+def core_mass_share(
+    core_diameter_nm: ArrayLike,
+    shell_thickness_nm: float,
+    core_density_g_cm3: float,
+    shell_density_g_cm3: float,
+) -> NDArray[np.float64]:
+    """Return the core's share of the mass of a spherical core with its shell.
+
+    Parameters
+    ----------
+    core_diameter_nm : array-like
+        Diameters, nm, > 0.
+    shell_thickness_nm : float
+        Thickness, nm, >= 0.
+    core_density_g_cm3, shell_density_g_cm3 : float
+        Bulk densities, g/cm3, > 0.
+
+    Returns
+    -------
+    ndarray
+        Share, above 0, at most 1.
+
+    Examples
+    --------
+    >>> core_mass_share([4.0], 0.0, 5.8, 4.1).tolist()
+    [1.0]
+    """
+    d = np.asarray(core_diameter_nm, dtype=np.float64)
+    core = core_density_g_cm3 * d**3
+    shell = shell_density_g_cm3 * ((d + 2.0 * shell_thickness_nm) ** 3 - d**3)
+    return np.asarray(core / (core + shell))

@@ -1,7 +1,6 @@
 """Limits that follow from the composition: hazard, restricted substances, supply, price."""
 
-from collections.abc import Callable
-from functools import partial
+from collections.abc import Callable, Mapping
 from math import isnan, nan
 
 import numpy as np
@@ -9,10 +8,16 @@ import pandas as pd
 
 from features.density import crystal_density_g_cm3
 from features.formula import parse_formula
-from features.hazards import cautions_for, exemptions_running, rohs_mass_fractions
-from features.mass_shares import core_shell_composition
+from features.hazards import (
+    RohsShare,
+    cautions_for,
+    exemptions_running,
+    rohs_mass_fractions,
+)
+from features.mass_shares import core_mass_share
 from features.supply import supply_figures
-from screening.limit_check import Check, by_material
+from screening.covariance import FloatArray
+from screening.limit_check import Check, by_material, by_material_and_size
 from screening.limit_rules import Limits, Shell
 
 __all__ = ["composition_checks"]
@@ -82,57 +87,67 @@ def _within(found: int, highest: int, without: tuple[str, ...], words: str) -> t
 
 
 def _restricted(frame: pd.DataFrame, limits: Limits) -> Check:
-    if limits.shell is None:
-        ask = partial(_shares_words, limits=limits)
-        return by_material(
-            frame, "restricted_substances", lambda name: ask(composition=_amounts(name))
-        )
-    return _restricted_with_shell(frame, limits, limits.shell)
+    def ask(material: str, diameter_nm: FloatArray) -> tuple[FloatArray, Callable[[int], str]]:
+        core = rohs_mass_fractions(_amounts(material))
+        if limits.shell is None:
+            share = {
+                name: np.full(len(diameter_nm), one.mass_percent) for name, one in core.items()
+            }
+            return _judged(core, share, limits)
+        coat = rohs_mass_fractions(_amounts(limits.shell.material))
+        if not any(one.mass_percent > 0.0 for one in (*core.values(), *coat.values())):
+            return _same(1.0, "no restricted element in core or shell", len(diameter_nm))
+        of_core = _core_share(material, limits.shell, diameter_nm)
+        if isinstance(of_core, str):
+            return _same(nan, of_core, len(diameter_nm))
+        share = {
+            name: core[name].mass_percent * of_core + coat[name].mass_percent * (1.0 - of_core)
+            for name in core
+        }
+        return _judged(core, share, limits)
+
+    return by_material_and_size(frame, "restricted_substances", ask)
 
 
-def _restricted_with_shell(frame: pd.DataFrame, limits: Limits, shell: Shell) -> Check:
-    """Ask once a material and size: the shell's share of the mass falls with the size."""
-    pairs = list(zip(frame["material"], frame["diameter_nm"].astype(float), strict=True))
-    codes, unique = pd.factorize(pd.Series(pairs, dtype=object))
-    answers = [_shelled(str(name), float(size), limits, shell) for name, size in unique]
-    chance = np.array([chance for chance, _ in answers], dtype=np.float64)[codes]
-    return Check("restricted_substances", chance, lambda at: answers[codes[at]][1])
+def _same(chance: float, words: str, n_rows: int) -> tuple[FloatArray, Callable[[int], str]]:
+    return np.full(n_rows, chance), lambda _: words
 
 
-def _shelled(material: str, diameter_nm: float, limits: Limits, shell: Shell) -> tuple[float, str]:
-    both = {**_amounts(material), **_amounts(shell.material)}
-    if not any(share.mass_percent > 0.0 for share in rohs_mass_fractions(both).values()):
-        return 1.0, "no restricted element in core or shell"
+def _core_share(material: str, shell: Shell, diameter_nm: FloatArray) -> FloatArray | str:
+    """Return the core's share of the particle's mass, or which density is missing."""
     core_density = shell.core_density_g_cm3 or crystal_density_g_cm3(material)
     shell_density = shell.density_g_cm3 or crystal_density_g_cm3(shell.material)
     if isnan(core_density) or isnan(shell_density):
         which = material if isnan(core_density) else shell.material
-        return nan, f"no density on record for {which}; give it in limits.shell"
-    composition = core_shell_composition(
-        _amounts(material),
-        _amounts(shell.material),
-        core_diameter_nm=diameter_nm,
-        shell_thickness_nm=shell.thickness_nm,
-        core_density_g_cm3=core_density,
-        shell_density_g_cm3=shell_density,
-    )
-    return _shares_words(limits=limits, composition=composition)
+        return f"no density on record for {which}; give it in limits.shell"
+    return core_mass_share(diameter_nm, shell.thickness_nm, core_density, shell_density)
 
 
-def _shares_words(*, limits: Limits, composition: dict[str, float]) -> tuple[float, str]:
-    over = [share for share in rohs_mass_fractions(composition).values() if share.exceeds]
-    if not over:
-        return 1.0, "no restricted element above its limit in the particle"
-    facts = ", ".join(
-        f"{share.restricted_form} {share.mass_percent:.3g} % by mass, limit "
-        f"{share.limit_mass_percent:g} % ({share.limit_date})"
-        for share in over
-    )
-    if limits.exemptions_on is not None:
-        running = {
-            share.element: exemptions_running(share.element, limits.exemptions_on) for share in over
-        }
-        if all(running.values()):
-            words = "; ".join(text for texts in running.values() for text in texts)
-            return nan, f"{facts}; may be exempt: {words}; the law in force decides"
-    return 0.0, facts
+def _judged(
+    core: Mapping[str, RohsShare], share: Mapping[str, FloatArray], limits: Limits
+) -> tuple[FloatArray, Callable[[int], str]]:
+    """Return verdicts of mass shares, in percent, against the limits of the elements."""
+    over = {name: share[name] > one.limit_mass_percent for name, one in core.items()}
+    running = {
+        name: exemptions_running(name, limits.exemptions_on) if limits.exemptions_on else ()
+        for name in core
+    }
+    exceeds = np.any(list(over.values()), axis=0)
+    barred = np.any([over[name] for name in core if not running[name]], axis=0)
+    chance = np.where(barred, 0.0, np.where(exceeds, nan, 1.0))
+
+    def say(at: int) -> str:
+        names = [name for name in core if over[name][at]]
+        if not names:
+            return "no restricted element above its limit in the particle"
+        facts = ", ".join(
+            f"{core[name].restricted_form} {share[name][at]:.3g} % by mass, limit "
+            f"{core[name].limit_mass_percent:g} % ({core[name].limit_date})"
+            for name in names
+        )
+        if barred[at]:
+            return facts
+        exempt = "; ".join(text for name in names for text in running[name])
+        return f"{facts}; may be exempt: {exempt}; the law in force decides"
+
+    return chance, say

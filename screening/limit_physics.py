@@ -14,7 +14,7 @@ from features.stability import melting_estimate, sintering_temperatures_K, therm
 from features.stability_magnetic import superparamagnetic_chance, superparamagnetic_estimate
 from features.stability_scorecard import melting_discrepancy
 from screening.covariance import FloatArray
-from screening.limit_check import Check
+from screening.limit_check import Check, by_material_and_size
 from screening.limit_rules import Limits
 
 __all__ = ["physics_checks"]
@@ -23,7 +23,6 @@ _ROOM_K = 298.15
 _MAGNETIC = frozenset(
     {"Cr", "Mn", "Fe", "Co", "Ni", "Gd", "Tb", "Dy", "Ho", "Er", "Tm", "Nd", "Sm"}
 )
-_Judge = Callable[[str, FloatArray], tuple[FloatArray, Callable[[int], str]]]
 
 
 def physics_checks() -> dict[str, Callable[[pd.DataFrame, Limits], Check]]:
@@ -33,22 +32,6 @@ def physics_checks() -> dict[str, Callable[[pd.DataFrame, Limits], Check]]:
         "metallic": _metallic,
         "superparamagnetic": _superparamagnetic,
     }
-
-
-def _by_material_and_size(frame: pd.DataFrame, limit: str, judge: _Judge, **how: bool) -> Check:
-    """Ask once a material, for all of its sizes together."""
-    codes, names = pd.factorize(frame["material"])
-    diameter = frame["diameter_nm"].to_numpy(dtype=np.float64)
-    chance = np.full(len(frame), nan)
-    place = np.zeros(len(frame), dtype=np.int64)
-    words = []
-    order = np.argsort(codes, kind="stable")
-    ends = np.cumsum(np.bincount(codes, minlength=len(names)))
-    for name, rows in zip(names, np.split(order, ends[:-1]), strict=True):
-        place[rows] = np.arange(len(rows))
-        chance[rows], say = judge(str(name), diameter[rows])
-        words.append(say)
-    return Check(limit, chance, lambda at: words[codes[at]](int(place[at])), **how)
 
 
 def _nothing(n_rows: int, words: str) -> tuple[FloatArray, Callable[[int], str]]:
@@ -87,7 +70,7 @@ def _survival(frame: pd.DataFrame, limits: Limits) -> Check:
 
         return chance, say
 
-    return _by_material_and_size(frame, "operating_temperature_K", ask, in_sigmas=True)
+    return by_material_and_size(frame, "operating_temperature_K", ask, in_sigmas=True)
 
 
 def _metallic(frame: pd.DataFrame, limits: Limits) -> Check:
@@ -108,7 +91,7 @@ def _metallic(frame: pd.DataFrame, limits: Limits) -> Check:
             lambda at: f"metallic with a chance of {chance[at]:.2f} at {diameter_nm[at]:g} nm",
         )
 
-    return _by_material_and_size(frame, "metallic", ask)
+    return by_material_and_size(frame, "metallic", ask)
 
 
 def _superparamagnetic(frame: pd.DataFrame, limits: Limits) -> Check:
@@ -141,4 +124,4 @@ def _superparamagnetic(frame: pd.DataFrame, limits: Limits) -> Check:
             ),
         )
 
-    return _by_material_and_size(frame, "superparamagnetic", ask)
+    return by_material_and_size(frame, "superparamagnetic", ask)

@@ -5,7 +5,7 @@ from screening.table_check import check_text
 
 TABLES = [
     ("material,diameter_nm,property,value\nCdSe,5,emission_nm,630\n", "results of a laboratory"),
-    ("material,diameter_nm,energy_eV,energy_kind\nCdSe,5,2,0.587\n", "records of size"),
+    ("material,diameter_nm,energy_eV,energy_kind\nCdSe,5,2,first absorption\n", "records of size"),
     ("material,diameter_nm\nCdSe,5\nInP,3\n", "questions on quantum dots"),
     ("diameter_nm,count\n4,1\n5,2\n", "size distribution"),
 ]
