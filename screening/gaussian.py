@@ -117,8 +117,8 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
                 )
             theta, self.n_iter_ = result.x, max(1, int(result.nit))
         self.theta_ = theta
-        self.log_posterior_ = -self._objective(theta, centre, spread)[0]
         self._factorise()
+        self.log_posterior_ = self._log_posterior((theta - centre) / spread)
         return self
 
     def predict(self, X: Any, return_std: bool = False) -> Any:
@@ -286,6 +286,13 @@ class GroupedGaussianProcess(RegressorMixin, BaseEstimator):
             + 0.5 * standard @ standard
         )
         return float(value), np.concatenate([*gradient, [by_noise]]) + standard / spread
+
+    def _log_posterior(self, standard: FloatArray) -> float:
+        """Return the log posterior of the factorised parameters, standardised by their prior."""
+        n_rows = len(self.y_)
+        fit = 0.5 * self.y_ @ self._alpha + np.log(np.diag(self._cholesky[0])).sum()
+        prior = 0.5 * standard @ standard
+        return -float(fit + 0.5 * n_rows * np.log(2.0 * np.pi) + prior)
 
     def _factorise(self) -> None:
         total = self._covariance(self.X_, self.X_, same_rows=True)

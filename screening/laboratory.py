@@ -22,7 +22,7 @@ from screening.measurements import measured_rows
 __all__ = ["LabUpdate", "SizeBias", "join_results", "size_bias"]
 
 _PRIOR_SD = 0.05
-_GRID = np.linspace(-0.16, 0.16, 33)
+_GRID = np.linspace(-0.16, 0.16, 25)
 _IMPROBABLE = 0.05
 _TELLING_SIGMAS = 2.0
 _DRIFT_P = 0.01
