@@ -153,7 +153,7 @@ def coordination_step(generalised_coordination: FloatArray, structure: str) -> F
 
     Examples
     --------
-    >>> coordination_step(np.array([7.5, 5.5]), "fcc").tolist()
+    >>> coordination_step(np.array([7.5, 5.5]), "fcc").round(9).tolist()
     [0.0, -2.0]
     """
     terrace = TERRACE_COORDINATION[structure]
