@@ -2,7 +2,7 @@
 
 `features.particle` counts atoms by facet and coordination and gives the mean generalised
 coordination of each class. Whatever depends steeply on it, such as a volcano, must not be taken at
-the mean: of the atoms of a (111) facet those inside have 7.5, those beside an edge 6.9 to 7.3.
+the mean: of the atoms of a (111) facet those inside have 7.5, those beside an edge 6.5 to 7.3.
 Here every value that occurs is a column of its own. Counts are closed forms as there.
 """
 
