@@ -1,4 +1,4 @@
-"""Free energies of adsorption, reaction volcanoes and the pull of generalised coordination.
+"""Free energies of adsorption and reaction volcanoes.
 
 Energies in eV against one common reference per adsorbate (table ``free_energy_corrections``);
 negative binds. A volcano (Sabatier) gives a relative activity per site, never a rate: Norskov et
@@ -21,14 +21,12 @@ from features.tables import read_table
 __all__ = [
     "Reaction",
     "common_references",
-    "coordination_slope",
     "free_energy_correction",
     "free_energy_eV",
     "reaction",
     "reaction_names",
     "relative_volcano_interval",
     "relative_volcano_log10",
-    "scaled_energy_eV",
 ]
 
 FloatArray = NDArray[np.float64]
@@ -343,75 +341,3 @@ def relative_volcano_interval(
     )
     holds = (np.asarray(low_eV) <= volcano.optimum_eV) & (volcano.optimum_eV <= np.asarray(high_eV))
     return ends.min(axis=0), np.where(holds, 0.0, ends.max(axis=0))
-
-
-def scaled_energy_eV(
-    descriptor_eV: Any, adsorbate: str, descriptor: str, kind: str = "adsorbate scaling"
-) -> tuple[FloatArray, float]:
-    """Estimate one adsorbate's energy from another's by a tabulated linear relation.
-
-    Parameters
-    ----------
-    descriptor_eV : float or array-like
-    adsorbate, descriptor : str
-        Such as ``"OH"`` from ``"O"``, or ``"OOH"`` from ``"OH"``.
-    kind : {"adsorbate scaling", "free-energy scaling"}, default "adsorbate scaling"
-
-    Returns
-    -------
-    energy_eV : ndarray
-    residual_sd_eV : float
-        Scatter about the line; NaN where the source gives none.
-
-    Raises
-    ------
-    SpecificationError
-        If no such relation is tabulated.
-
-    Examples
-    --------
-    >>> energy, sd = scaled_energy_eV(0.86, "OOH", "OH", kind="free-energy scaling")
-    >>> round(float(energy), 2)
-    4.06
-    """
-    table = read_table("scaling_relations")
-    rows = table[
-        (table["kind"] == kind)
-        & (table["adsorbate"] == adsorbate)
-        & (table["descriptor"] == descriptor)
-    ]
-    if rows.empty:
-        raise SpecificationError(
-            explain("no linear relation", where=kind, found=f"{adsorbate} from {descriptor}")
-        )
-    row = rows.iloc[0]
-    line = float(row["slope"]) * np.asarray(descriptor_eV, dtype=np.float64)
-    return line + float(row["intercept_eV"]), float(row["residual_sd_eV"])
-
-
-def coordination_slope(metal: str, adsorbate: str) -> tuple[float, float] | None:
-    """Return a published slope of the adsorption energy with generalised coordination.
-
-    Parameters
-    ----------
-    metal, adsorbate : str
-
-    Returns
-    -------
-    (slope, residual_sd_eV) or None
-        eV per unit and eV, the mean over sources; None if nothing is published in the table.
-
-    Examples
-    --------
-    >>> round(coordination_slope("Pt", "OH")[0], 2)
-    0.19
-    """
-    table = read_table("scaling_relations")
-    rows = table[
-        (table["kind"] == "generalised coordination")
-        & (table["metal"] == metal)
-        & (table["adsorbate"] == adsorbate)
-    ]
-    if rows.empty:
-        return None
-    return float(rows["slope"].mean()), float(rows["residual_sd_eV"].mean())

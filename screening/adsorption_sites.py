@@ -11,8 +11,8 @@ from typing import Self
 import numpy as np
 import pandas as pd
 
-from features.adsorption import coordination_slope
 from features.adsorption_descriptors import metal_descriptors
+from features.adsorption_scaling import coordination_slope
 from screening.covariance import FloatArray
 
 __all__ = [

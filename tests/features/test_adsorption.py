@@ -11,14 +11,13 @@ from scipy.constants import Avogadro, elementary_charge
 
 from features.adsorption import (
     common_references,
-    coordination_slope,
     free_energy_eV,
     reaction,
     reaction_names,
     relative_volcano_interval,
     relative_volcano_log10,
-    scaled_energy_eV,
 )
+from features.adsorption_scaling import coordination_slope, scaled_energy_eV
 from features.errors import SpecificationError, UnknownMaterialError
 from features.tables import read_table
 

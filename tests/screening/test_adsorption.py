@@ -7,12 +7,8 @@ import pandas as pd
 import pytest
 from scipy.stats import spearmanr
 
-from features.adsorption import (
-    coordination_slope,
-    free_energy_eV,
-    reaction,
-    relative_volcano_log10,
-)
+from features.adsorption import free_energy_eV, reaction, relative_volcano_log10
+from features.adsorption_scaling import coordination_slope
 from features.errors import FormulaError, SpecificationError, TableError, UnknownMaterialError
 from screening.adsorption import RECORD_STATES, adsorption_model
 from screening.adsorption_alloys import AlloySurfaceModel
