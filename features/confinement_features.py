@@ -20,7 +20,7 @@ from features.confinement import (
 )
 from features.finite_barrier import finite_barrier_gap_eV
 
-__all__ = ["ConfinementFeatures", "LAYER_nm", "SMALLEST_GAP_eV"]
+__all__ = ["ConfinementFeatures", "_LAYER_nm", "_SMALLEST_GAP_eV"]
 
 _INPUTS = ("diameter_nm", "gap_eV", "electron_mass_m0", "hole_mass_m0", "dielectric")
 _DEFAULTS = (4.0, 1.5, 0.15, 0.5, 7.0)
@@ -39,8 +39,8 @@ _OUTPUTS = (
     "bohr_radius_over_radius",
     "surface_fraction",
 )
-LAYER_nm = 0.3
-SMALLEST_GAP_eV = 0.2
+_LAYER_nm = 0.3
+_SMALLEST_GAP_eV = 0.2
 
 
 class ConfinementFeatures(TransformerMixin, BaseEstimator):
@@ -98,7 +98,7 @@ class ConfinementFeatures(TransformerMixin, BaseEstimator):
             else np.full(len(values), default)
             for i, (default, floor) in enumerate(zip(_DEFAULTS, _FLOORS, strict=True))
         ]
-        columns = [*_physics(*inputs), *values[:, len(_INPUTS) :].T]
+        columns = [*physics_columns(*inputs), *values[:, len(_INPUTS) :].T]
         return pd.DataFrame(
             np.column_stack(columns), columns=self.get_feature_names_out(), index=index
         )
@@ -116,26 +116,41 @@ class ConfinementFeatures(TransformerMixin, BaseEstimator):
         return tags
 
 
-def _physics(
+def physics_columns(
     diameter: NDArray[np.float64],
     gap: NDArray[np.float64],
     electron: NDArray[np.float64],
     hole: NDArray[np.float64],
     dielectric: NDArray[np.float64],
+    barrier_shift: NDArray[np.float64] | None = None,
 ) -> list[NDArray[np.float64]]:
-    """Return the output columns in the order of their names."""
+    """Return the physics outputs in the order of their names, broadcast over the inputs.
+
+    Parameters
+    ----------
+    diameter, gap, electron, hole, dielectric : ndarray
+        nm, eV, free electron masses, and one.
+    barrier_shift : ndarray or None, default None
+        Shift of the finite-barrier gap (eV) where it is known already; it costs the most.
+
+    Returns
+    -------
+    list of ndarray
+    """
     mass = reduced_mass(electron, hole)
+    if barrier_shift is None:
+        barrier_shift = finite_barrier_gap_eV(diameter, gap, electron, hole, dielectric) - gap
     return [
         np.log(mass),
-        np.log(np.maximum(np.abs(gap), SMALLEST_GAP_eV)),
+        np.log(np.maximum(np.abs(gap), _SMALLEST_GAP_eV)),
         np.log(dielectric),
         np.log(hole / electron),
         np.log(diameter),
         sphere_confinement_eV(diameter, mass),
         brus_gap_eV(diameter, gap, electron, hole, dielectric) - gap,
         two_band_gap_eV(diameter, gap, mass) - gap,
-        finite_barrier_gap_eV(diameter, gap, electron, hole, dielectric) - gap,
+        barrier_shift,
         coulomb_energy_eV(diameter, dielectric),
         exciton_bohr_radius_nm(dielectric, mass) / (diameter / 2.0),
-        surface_fraction(diameter, LAYER_nm),
+        surface_fraction(diameter, _LAYER_nm),
     ]

@@ -14,16 +14,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from features.confinement import (
-    brus_gap_eV,
-    coulomb_energy_eV,
-    exciton_bohr_radius_nm,
-    reduced_mass,
-    sphere_confinement_eV,
-    surface_fraction,
-    two_band_gap_eV,
-)
-from features.confinement_features import LAYER_nm, SMALLEST_GAP_eV
+from features.confinement_features import physics_columns
 from features.emission import stokes_shifts
 from screening.calibration import GroupCalibration
 from screening.candidates import pair_frame
@@ -279,21 +270,7 @@ def _features(
         frame[name].to_numpy(dtype=np.float64)[:, None]
         for name in ("gap_eV", "electron_mass_m0", "hole_mass_m0", "dielectric")
     )
-    mass = reduced_mass(electron, hole)
-    columns = [
-        np.log(mass),
-        np.log(np.maximum(np.abs(gap), SMALLEST_GAP_eV)),
-        np.log(dielectric),
-        np.log(hole / electron),
-        np.log(d),
-        sphere_confinement_eV(d, mass),
-        brus_gap_eV(d, gap, electron, hole, dielectric) - gap,
-        two_band_gap_eV(d, gap, mass) - gap,
-        physics - gap,
-        coulomb_energy_eV(d, dielectric),
-        exciton_bohr_radius_nm(dielectric, mass) / (d / 2.0),
-        surface_fraction(d, LAYER_nm),
-    ]
+    columns = physics_columns(d, gap, electron, hole, dielectric, physics - gap)
     return [np.broadcast_to(column, physics.shape) for column in columns]
 
 
