@@ -7,9 +7,15 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from features.errors import NothingQualifiesError, SpecificationError, UnknownMaterialError, explain
+from features.errors import (
+    FewnmError,
+    NothingQualifiesError,
+    SpecificationError,
+    UnknownMaterialError,
+    explain,
+)
 from features.formula import parse_formula
-from features.semiconductors import bulk_constants, known_materials, match_material
+from features.semiconductors import bulk_constants, find_material, known_materials
 
 if TYPE_CHECKING:
     from screening.specification import Candidates
@@ -34,19 +40,20 @@ def choose_materials(
     Returns
     -------
     materials : list of str
-        Names as in the bulk table, in the order given or sorted.
+        Names as in the bulk table, or canonical formulas of compounds whose constants are
+        interpolated or estimated; in the order given or sorted.
     refused : pandas.DataFrame
         Columns material, reason, limit, verdict.
 
     Raises
     ------
     SpecificationError
-        If a material or family is not in the tables.
+        If a text is no compound that can have a gap, or a family is not in the tables.
     NothingQualifiesError
         If no material is left.
     """
     names = _named(wanted)
-    table = bulk_constants(names)
+    table = constants_of(names)
     _check_families(wanted, bulk_constants(known_materials())["family"])
     recorded = set(on_record)
     kept: list[str] = []
@@ -77,9 +84,11 @@ def _named(wanted: "Candidates") -> list[str]:
     if not wanted.materials:
         return known_materials()
     try:
-        return list(dict.fromkeys(match_material(text) for text in wanted.materials))
-    except (UnknownMaterialError, ValueError) as error:
+        names = [find_material(text) or parse_formula(text).formula for text in wanted.materials]
+        constants_of(names)
+    except FewnmError as error:
         raise SpecificationError(f"candidates.materials: {error}") from None
+    return list(dict.fromkeys(names))
 
 
 def _check_families(wanted: "Candidates", families: pd.Series) -> None:

@@ -127,8 +127,11 @@ class EmissionTrack:
         described = best.join(distance_to_data(model, best)[["kernel_distance", "reach"]]).join(
             parts[[name for name in parts if name in self.columns]]
         )
+        basis = best.get("basis", "record")
         return described.assign(
-            nearest_source=nearest_records(best, model), cautions=caution_column(best["material"])
+            bulk_basis=basis,
+            nearest_source=nearest_records(best, model),
+            cautions=caution_column(best["material"]),
         )
 
     def warnings(self, result: "RankResult") -> list[str]:
@@ -138,6 +141,10 @@ class EmissionTrack:
         new = result.shortlist["record_state"].eq("new").sum()
         if new:
             notes.append(f"{new} of {n_rows} rows are materials without size data")
+        for basis, words in (("alloy", "interpolated"), ("model", "estimated from composition")):
+            count = int(result.shortlist["bulk_basis"].eq(basis).sum())
+            if count:
+                notes.append(f"the bulk constants of {count} of {n_rows} rows are {words}")
         far = result.shortlist["reach"].eq(FAR).sum()
         if far:
             notes.append(f"{far} of {n_rows} rows lie farther from the data than was ever checked")

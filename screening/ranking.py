@@ -44,6 +44,7 @@ COLUMNS = (
     "batch_yield",
     "size_spread_needed",
     "record_state",
+    "bulk_basis",
     "kernel_distance",
     "reach",
     "model_part_sd_eV",

@@ -96,9 +96,9 @@ def test_an_earlier_run_is_not_overwritten_without_being_told(run):
             "unknown element",
         ),
         (
-            "[target]\nwindow_nm = [625, 635]\n[candidates]\nmaterials = ['NaCl']\n",
+            "[target]\nwindow_nm = [625, 635]\n[candidates]\nmaterials = ['CuAu']\n",
             4,
-            "no bulk constants",
+            "all constituents are metals",
         ),
         (
             "[target]\nwindow_nm = [625, 635]\n[candidates]\ndiameter_nm = [-2, 5]\n",

@@ -109,7 +109,7 @@ def test_the_order_of_materials_does_not_change_the_ranking(model):
     ("candidates", "error", "message"),
     [
         ({"materials": ["Unobtainium"]}, SpecificationError, "candidates.materials"),
-        ({"materials": ["NaCl"]}, SpecificationError, "no bulk constants on record"),
+        ({"materials": ["CuAu"]}, SpecificationError, "all constituents are metals"),
         ({"families": ["metals"]}, SpecificationError, "unknown family 'metals'.*III-V"),
         ({"materials": ["CdSe"], "exclude_elements": ["Cd"]}, NothingQualifiesError, "no material"),
         ({"materials": ["ZnO"]}, NothingQualifiesError, "no candidate qualifies"),
@@ -140,3 +140,15 @@ def test_the_emission_interval_holds_the_spread_behind_its_chance(model):
     assert score(model, row, window)["chance_in_window"].item() == pytest.approx(0.9, abs=1e-9)
     gap_width = row["optical_gap_high_eV"] - row["optical_gap_low_eV"]
     assert (row["emission_high_eV"] - row["emission_low_eV"] > gap_width).all()
+
+
+def test_solid_solutions_and_unmeasured_compounds_compete_and_say_so(model):
+    candidates = FAST | {"materials": ["CdSe0.6S0.4", "CdSe", "ZnGeP2"]}
+    wide = {"target": {"window_eV": [1.6, 2.6]}, "candidates": candidates}
+    listed = rank(parse_specification(wide), model).shortlist.set_index("material")
+    assert listed["bulk_basis"].to_dict() == {
+        "CdSe0.6S0.4": "alloy",
+        "CdSe": "record",
+        "ZnGeP2": "model",
+    }
+    assert listed["record_state"]["ZnGeP2"] == "new"
