@@ -188,37 +188,48 @@ def _shortlist_text(result: Any) -> str:
 @_guarded
 def plan(
     spec: Annotated[str, typer.Argument(help="Specification: a .toml file or a packaged name.")],
-    out: Annotated[Path, typer.Option(help="Folder for the plan; made if missing.")],
+    out: Annotated[Path | None, typer.Option(help="Folder for the plan; else printed.")] = None,
     samples: Annotated[int | None, typer.Option(min=1, max=100, help="Samples to propose.")] = None,
+    policy: Annotated[
+        Literal["hit", "approach", "edge", "teach"] | None,
+        typer.Option(help="What the samples are for; else the specification's."),
+    ] = None,
     results: Annotated[Path | None, typer.Option(help="CSV of your own results.")] = None,
     overwrite: Annotated[bool, typer.Option(help="Replace an earlier plan in the folder.")] = False,
 ) -> None:
     """Propose the next samples, with the reason of each and the chance that one lands.
 
-    Example: fewnm plan red-emitter --samples 6 --out next
+    Example: fewnm plan red-emitter --samples 6
     """
     specification, own = _loaded(spec, results)
     from screening.outputs import prepare_folder
-    from screening.planning_run import plan_text, run_plan
+    from screening.planning_run import plan_text, planned, write_plan
 
-    if out.exists():
+    if out is not None and out.exists():
         prepare_folder(out, overwrite=overwrite)
+    if policy is not None:
+        chosen = specification.plan.model_copy(update={"policy": policy})
+        specification = specification.model_copy(update={"plan": chosen})
     with _Stage(f"Planning: {specification.title}"):
-        table = run_plan(specification, out, samples=samples, results=own, overwrite=overwrite)
-    _say(plan_text(table))
-    _say(f"Plan: {out / 'plan.csv'}")
+        made = planned(specification, samples=samples, results=own)
+    typer.echo(plan_text(made.table))
+    if out is not None:
+        write_plan(made, out, overwrite=overwrite)
+        _say(f"Plan: {out / 'plan.csv'}")
 
 
 @app.command(epilog=_EPILOG)
 @_guarded
 def rehearse(
-    out: Annotated[Path, typer.Option(help="Folder for the campaigns; made if missing.")],
+    out: Annotated[
+        Path | None, typer.Option(help="Folder for the campaigns; else printed alone.")
+    ] = None,
     jobs: Annotated[int, typer.Option(min=1, max=256, help="Worker processes.")] = 2,
     overwrite: Annotated[bool, typer.Option(help="Replace an earlier rehearsal.")] = False,
 ) -> None:
     """Replay discovery with every material hidden in turn, for every policy.
 
-    Takes some minutes on two cores. Example: fewnm rehearse --out rehearsal
+    Takes some minutes on two cores. Example: fewnm rehearse
     """
     from screening.planning_run import rehearsal_text, run_rehearsal
 

@@ -1,6 +1,7 @@
 """Plans and rehearsals as runs: files under one folder, and their tables as text."""
 
 import json
+from dataclasses import dataclass
 from pathlib import Path
 
 import pandas as pd
@@ -22,58 +23,98 @@ from screening.running import model_hash, ranked
 from screening.specification import Specification
 from screening.trained import evidence_hash
 
-__all__ = ["plan_text", "rehearsal_page", "rehearsal_text", "run_plan", "run_rehearsal"]
+__all__ = [
+    "PlannedRun",
+    "plan_text",
+    "planned",
+    "rehearsal_page",
+    "rehearsal_text",
+    "run_rehearsal",
+    "write_plan",
+]
 
 
-def run_plan(
-    specification: Specification,
-    folder: Path,
-    *,
-    samples: int | None = None,
-    results: Path | None = None,
-    overwrite: bool = False,
-) -> pd.DataFrame:
-    """Choose the next samples and write them.
+@dataclass(frozen=True)
+class PlannedRun:
+    """A plan and what it follows from.
+
+    Parameters
+    ----------
+    table : pandas.DataFrame
+        Columns `screening.planning.PLAN_COLUMNS`.
+    specification : Specification
+    model_hash : str
+    findings : tuple of str
+        What own results brought up.
+    """
+
+    table: pd.DataFrame
+    specification: Specification
+    model_hash: str
+    findings: tuple[str, ...]
+
+
+def planned(
+    specification: Specification, *, samples: int | None = None, results: Path | None = None
+) -> PlannedRun:
+    """Choose the next samples.
 
     Parameters
     ----------
     specification : Specification
-    folder : pathlib.Path
-        Output folder; made if missing.
     samples : int or None, default None
         Number of samples; None for the specification's.
     results : pathlib.Path or None, default None
         The laboratory's own results so far.
-    overwrite : bool, default False
-        Replace an earlier plan.
 
     Returns
     -------
-    pandas.DataFrame
-        Columns `screening.planning.PLAN_COLUMNS`.
+    PlannedRun
 
     Raises
     ------
-    OutputError, TableError, SpecificationError, NothingQualifiesError
+    TableError, SpecificationError, NothingQualifiesError
         As for `screening.running.run_rank`.
     """
     result = ranked(specification, results)
     made = None if results is None else measured_rows(read_measurements(results))
-    plan = plan_samples(result, made, samples)
-    table = csv_text(plan)
+    return PlannedRun(
+        plan_samples(result, made, samples),
+        specification,
+        model_hash(specification, results),
+        result.update.findings if result.update else (),
+    )
+
+
+def write_plan(plan: PlannedRun, folder: Path, *, overwrite: bool = False) -> None:
+    """Write a plan as CSV and JSON with its manifest.
+
+    Parameters
+    ----------
+    plan : PlannedRun
+    folder : pathlib.Path
+        Output folder; made if missing.
+    overwrite : bool, default False
+        Replace an earlier plan.
+
+    Raises
+    ------
+    OutputError
+        If the folder cannot take the files.
+    """
+    table = csv_text(plan.table)
     prepare_folder(folder, overwrite=overwrite)
     write_atomically(folder / "plan.csv", table)
-    write_atomically(folder / "plan.json", json_text(plan, "plan"))
+    write_atomically(folder / "plan.json", json_text(plan.table, "plan"))
     manifest = build_manifest(
-        specification=specification.model_dump(mode="json"),
-        model_hash=model_hash(specification, results),
+        specification=plan.specification.model_dump(mode="json"),
+        model_hash=plan.model_hash,
         folder=folder,
         files=["plan.csv", "plan.json"],
         result_hash=text_hash(table),
-        warnings=list(result.update.findings) if result.update else [],
+        warnings=list(plan.findings),
     )
     write_atomically(folder / "manifest.json", json.dumps(manifest, indent=2, ensure_ascii=False))
-    return plan
 
 
 def plan_text(plan: pd.DataFrame) -> str:
@@ -87,13 +128,14 @@ def plan_text(plan: pd.DataFrame) -> str:
 
 
 def run_rehearsal(
-    folder: Path, *, n_jobs: int = 1, overwrite: bool = False
+    folder: Path | None, *, n_jobs: int = 1, overwrite: bool = False
 ) -> tuple[pd.DataFrame, pd.DataFrame]:
     """Replay discovery on the packaged tables and write every campaign.
 
     Parameters
     ----------
-    folder : pathlib.Path
+    folder : pathlib.Path or None
+        None writes nothing.
     n_jobs : int, default 1
     overwrite : bool, default False
 
@@ -107,9 +149,12 @@ def run_rehearsal(
     OutputError
         If the folder cannot take the results.
     """
-    prepare_folder(folder, overwrite=overwrite)
+    if folder is not None:
+        prepare_folder(folder, overwrite=overwrite)
     campaigns, learned = rehearse(training_rows(), n_jobs=n_jobs)
     figures = summarise_rehearsal(campaigns)
+    if folder is None:
+        return figures, learned
     write_atomically(folder / "campaigns.csv", csv_text(campaigns))
     write_atomically(folder / "policies.csv", csv_text(figures))
     write_atomically(folder / "after_three_samples.csv", csv_text(learned))
