@@ -203,8 +203,8 @@ Written by `make rehearsal` (`fewnm rehearse`). Each of {first["n_materials"]} m
 recorded sizes or more is hidden in turn; everything that learns does so from the others. Its own
 records, made monotonic and interpolated between their smallest and largest size, stand in for the
 laboratory, in steps of 0.1 nm and with 10 meV of noise. A window of 60 meV is looked for at three
-places of the range ({first["n_windows"]} windows; those in which more than half of the sizes land
-are left out). Random choice is its exact expectation.
+places of the range and with two draws of the noise: {first["n_windows"]} campaigns a policy, those
+left out in which more than half of the sizes land. Random choice is its exact expectation.
 
 | policy | median samples (90 % band) | mean | hits in six | best of six off (eV) | behind random |
 |---|---|---|---|---|---|

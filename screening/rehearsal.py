@@ -70,7 +70,10 @@ def hidden_curve(own: pd.DataFrame) -> tuple[FloatArray, FloatArray]:
 
 
 def rehearse(
-    rows: pd.DataFrame, materials: Sequence[str] | None = None, n_jobs: int = 1, seed: int = 0
+    rows: pd.DataFrame,
+    materials: Sequence[str] | None = None,
+    n_jobs: int = 1,
+    seeds: Sequence[int] = (0, 1),
 ) -> tuple[pd.DataFrame, pd.DataFrame]:
     """Replay discovery with each material hidden in turn.
 
@@ -82,12 +85,13 @@ def rehearse(
         Materials to hide; None for all with three recorded sizes or more.
     n_jobs : int, default 1
         Workers; the result does not depend on it.
-    seed : int, default 0
+    seeds : sequence of int, default (0, 1)
+        Of the noise of what is measured, each played in full.
 
     Returns
     -------
     campaigns : pandas.DataFrame
-        One row a material, window and policy: samples_to_first_hit, hits_in_budget (of six
+        One row a material, seed, window and policy: samples_to_first_hit, hits_in_budget (of six
         samples), regret_eV (distance of the best of six from the window), n_candidates,
         share_of_hits.
     learned : pandas.DataFrame
@@ -95,9 +99,7 @@ def rehearse(
     """
     counts = rows.groupby("material")["diameter_nm"].nunique()
     chosen = sorted(counts[counts >= _FEWEST_SIZES].index) if materials is None else list(materials)
-    parts = Parallel(n_jobs=n_jobs)(
-        delayed(_hide)(rows, material, seed + at) for at, material in enumerate(chosen)
-    )
+    parts = Parallel(n_jobs=n_jobs)(delayed(_hide)(rows, material, seeds) for material in chosen)
     campaigns = pd.concat([part[0] for part in parts], ignore_index=True)
     return campaigns, pd.concat([part[1] for part in parts], ignore_index=True)
 
@@ -105,19 +107,25 @@ def rehearse(
 class _Hidden:
     """One hidden material: what can be made, what would be measured, what is believed."""
 
-    def __init__(self, rows: pd.DataFrame, material: str, seed: int) -> None:
+    def __init__(self, rows: pd.DataFrame, material: str) -> None:
         own = rows[rows["material"].eq(material)]
         self.others = rows[rows["material"].ne(material)]
-        self.material, self.seed = material, seed
+        self.material = material
         self.diameter, self.gap = hidden_curve(own)
         first = own.iloc[0]
-        rng = np.random.default_rng(seed)
-        self.measured = self.gap + rng.normal(0.0, _MEASUREMENT_SD_EV, len(self.gap))
+        self.measure(0)
         constant = {name: first[name] for name in own.columns}
         self.frame = pd.DataFrame([constant] * len(self.diameter)).assign(
             diameter_nm=self.diameter, shape="sphere"
         )
         self.model = SizeGapModel(0).fit(self.others).calibrate()
+
+    def measure(self, seed: int) -> None:
+        """Draw what would be measured at every size."""
+        # a material's noise must not follow another's
+        rng = np.random.default_rng([seed, *self.material.encode()])
+        self.seed = seed
+        self.measured = self.gap + rng.normal(0.0, _MEASUREMENT_SD_EV, len(self.gap))
 
     def results(self, made: Sequence[int]) -> pd.DataFrame:
         """Return made samples as training rows."""
@@ -155,20 +163,33 @@ _DERIVED = [
 _BULK = ["material", "structure", "source", *_DERIVED[:8]]
 
 
-def _hide(rows: pd.DataFrame, material: str, seed: int) -> tuple[pd.DataFrame, pd.DataFrame]:
-    hidden = _Hidden(rows, material, seed)
-    campaigns = []
-    for place in _PLACES:
-        centre = float(hidden.gap[int(place * (len(hidden.gap) - 1))])
-        inside = np.abs(hidden.gap - centre) <= _HALF_WINDOW_EV
-        if inside.mean() > _COMMONEST:
-            continue
-        for policy in POLICIES:
-            order = _campaign(hidden, policy, centre, inside)
-            campaigns.append(_figures(hidden, policy, centre, inside, order))
-    columns = ["material", "window_eV", "policy", "samples_to_first_hit", "hits_in_budget"]
-    columns += ["regret_eV", "n_candidates", "share_of_hits"]
+def _hide(
+    rows: pd.DataFrame, material: str, seeds: Sequence[int]
+) -> tuple[pd.DataFrame, pd.DataFrame]:
+    hidden = _Hidden(rows, material)
+    campaigns = [
+        figures
+        for seed in seeds
+        for place in _PLACES
+        for figures in _campaigns(hidden, seed, place)
+    ]
+    columns = ["material", "seed", "window_eV", "policy", "samples_to_first_hit"]
+    columns += ["hits_in_budget", "regret_eV", "n_candidates", "share_of_hits"]
+    hidden.measure(seeds[0])
     return pd.DataFrame(campaigns, columns=columns), _after_three(hidden)
+
+
+def _campaigns(hidden: _Hidden, seed: int, place: float) -> list[dict[str, object]]:
+    """Play every policy on one window; none where hits are too common to look for."""
+    hidden.measure(seed)
+    centre = float(hidden.gap[int(place * (len(hidden.gap) - 1))])
+    inside = np.abs(hidden.gap - centre) <= _HALF_WINDOW_EV
+    if inside.mean() > _COMMONEST:
+        return []
+    return [
+        _figures(hidden, policy, centre, inside, _campaign(hidden, policy, centre, inside))
+        for policy in POLICIES
+    ]
 
 
 def _figures(
@@ -182,6 +203,7 @@ def _figures(
         first_expected = (len(inside) + 1) / (inside.sum() + 1)
     return {
         "material": hidden.material,
+        "seed": hidden.seed,
         "window_eV": round(centre, 4),
         "policy": policy,
         "samples_to_first_hit": first_expected if policy == "random" else first,
@@ -286,7 +308,7 @@ def summarise_rehearsal(campaigns: pd.DataFrame, seed: int = 0) -> pd.DataFrame:
         random choice is expected to.
     """
     wide = campaigns.pivot_table(
-        index=["material", "window_eV"], columns="policy", values="samples_to_first_hit"
+        index=["material", "seed", "window_eV"], columns="policy", values="samples_to_first_hit"
     )
     names = sorted(campaigns["material"].unique())
     by_material = {name: wide.xs(name, level="material") for name in names}

@@ -19,7 +19,7 @@ def test_the_hidden_curve_falls_and_stays_inside_the_records(rows):
 
 def test_every_policy_is_played_on_every_window(rehearsal):
     campaigns, _ = rehearsal
-    counts = campaigns.groupby("window_eV")["policy"].agg(list)
+    counts = campaigns.groupby(["seed", "window_eV"])["policy"].agg(list)
     assert all(sorted(found) == sorted(POLICIES) for found in counts)
 
 
